@@ -1,0 +1,5 @@
+"""``python -m massfingerprint``."""
+
+from massfingerprint.cli import entry
+
+entry()

@@ -1,0 +1,154 @@
+"""Plain text tables: comma-separated, UTF-8, units in the header as ``name [unit]``."""
+
+import os
+import re
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+
+from massfingerprint import vocabulary
+from massfingerprint.errors import MissingFileError, TableError, nearest_names
+
+_HEADER = re.compile(r"^(?P<name>[^\[\]]+?)\s*(?:\[(?P<unit>[^\[\]]*)\])?$")
+_RATE_COLUMNS = ("time_start", "time_end", "source", "mass_rate", "mass_rate_sigma", "citation")
+
+
+def read_table(path: str | os.PathLike[str], *, required: tuple[str, ...]) -> tuple[pd.DataFrame, dict[str, str]]:
+    """Read a comma-separated table as text.
+
+    Parameters
+    ----------
+    path : path
+        UTF-8, with or without a byte-order mark; the first line names the columns.
+    required : tuple of str
+        Column names, without unit, that must be there.
+
+    Returns
+    -------
+    (DataFrame, dict)
+        Cells as stripped strings, indexed by line number in the file; unit of each column whose header has one.
+
+    Raises
+    ------
+    MissingFileError
+        If there is no such file.
+    TableError
+        If it is not text, has no rows, repeats a column or lacks a required one.
+    """
+    source = Path(path)
+    if not source.is_file():
+        raise MissingFileError(f"{source}: there is no such file. Check the path; it is taken from the current folder.")
+    try:
+        frame = pd.read_csv(
+            source, header=None, dtype=str, keep_default_na=False, encoding="utf-8-sig", skip_blank_lines=False
+        )
+    except UnicodeDecodeError as error:
+        raise TableError(f"{source}: is not UTF-8 text (byte {error.start}). Save it as CSV UTF-8.") from error
+    except (pd.errors.ParserError, pd.errors.EmptyDataError) as error:
+        raise TableError(f"{source}: cannot be read as a comma-separated table: {str(error).strip()}.") from error
+    frame.index = pd.RangeIndex(1, len(frame) + 1)
+    frame, units = _split_headers(frame.iloc[1:].set_axis(frame.iloc[0], axis=1), source)
+    _check_columns(frame, required, source)
+    frame = frame.apply(lambda column: column.fillna("").str.strip())
+    frame = frame[(frame != "").any(axis=1)]
+    if frame.empty:
+        raise TableError(f"{source}: has a header but no rows.")
+    return frame, units
+
+
+def _split_headers(frame: pd.DataFrame, source: Path) -> tuple[pd.DataFrame, dict[str, str]]:
+    names, units = [], {}
+    for header in frame.columns:
+        match = _HEADER.match(str(header).strip())
+        if match is None:
+            raise TableError(
+                f"{source}: column header {header!r} must be a name, or a name and a unit as in 'mass_rate [Gt yr-1]'."
+            )
+        names.append(match["name"])
+        if match["unit"] is not None:
+            units[match["name"]] = match["unit"].strip()
+    repeated = sorted({name for name in names if names.count(name) > 1})
+    if repeated:
+        raise TableError(f"{source}: column {repeated[0]!r} stands there twice. Keep one.")
+    return frame.set_axis(names, axis=1), units
+
+
+def _check_columns(frame: pd.DataFrame, required: tuple[str, ...], source: Path) -> None:
+    missing = [name for name in required if name not in frame.columns]
+    if not missing:
+        return
+    found = [str(name) for name in frame.columns]
+    hint = "Use commas between columns." if len(found) == 1 and ";" in found[0] else nearest_names(missing[0], found)
+    raise TableError(
+        f"{source}: lacks the column{'s' if len(missing) > 1 else ''} {', '.join(missing)}; found {', '.join(found)}. {hint}"
+    )
+
+
+def numbers(frame: pd.DataFrame, column: str, *, path: str | os.PathLike[str]) -> np.ndarray:
+    """Cells of one text column as float64, or TableError naming the line and the cell."""
+    values = pd.to_numeric(frame[column], errors="coerce").to_numpy(dtype=np.float64)
+    bad = np.flatnonzero(~np.isfinite(values))
+    if bad.size:
+        cell = frame[column].iloc[bad[0]]
+        cure = "Use a decimal point." if re.fullmatch(r"[-+]?\d+,\d+", cell) else "Give a finite number."
+        raise TableError(f"{path}: line {frame.index[bad[0]]}: {column} is {cell!r}, not a number. {cure}")
+    return values
+
+
+def read_rates(path: str | os.PathLike[str]) -> pd.DataFrame:
+    """Read a table of constant mass rates.
+
+    Parameters
+    ----------
+    path : path
+        CSV with ``time_start``, ``time_end`` (ISO dates), ``source``, ``mass_rate [Gt yr-1]``, ``mass_rate_sigma [Gt yr-1]``,
+        ``citation``; any unit convertible to Gt yr-1.
+
+    Returns
+    -------
+    DataFrame
+        Same columns, rates in Gt yr-1 (negative = loss), sigma 1 standard uncertainty, times as datetime64.
+
+    Raises
+    ------
+    MissingFileError, TableError, UnitsError
+        If the file, a column, a number, a date or a unit cannot be used.
+    """
+    frame, units = read_table(path, required=_RATE_COLUMNS)
+    out = frame.loc[:, list(_RATE_COLUMNS)].copy()
+    for column in ("mass_rate", "mass_rate_sigma"):
+        held = {"units": units[column]} if column in units else {}
+        _, factor = vocabulary.require(held, ("Gt yr-1",), argument=f"{path}: column {column}")
+        out[column] = numbers(frame, column, path=path) * factor
+    for column in ("time_start", "time_end"):
+        out[column] = _dates(frame, column, path)
+    _check_rates(out, path)
+    return out.reset_index(drop=True)
+
+
+def _dates(frame: pd.DataFrame, column: str, path: str | os.PathLike[str]) -> pd.Series:
+    values = pd.to_datetime(frame[column], errors="coerce", format="ISO8601")
+    if values.isna().any():
+        line = values.index[values.isna()][0]
+        raise TableError(
+            f"{path}: line {line}: {column} is {frame[column][line]!r}, not an ISO date such as 1992-01-01."
+        )
+    return values
+
+
+def _check_rates(rates: pd.DataFrame, path: str | os.PathLike[str]) -> None:
+    for line, row in rates.iterrows():
+        if not row["source"]:
+            raise TableError(f"{path}: line {line}: source is empty. Name the mass source.")
+        if row["mass_rate_sigma"] < 0.0:
+            raise TableError(
+                f"{path}: line {line}: mass_rate_sigma is {row['mass_rate_sigma']:g}; it must be 0 or more."
+            )
+        if row["time_end"] <= row["time_start"]:
+            raise TableError(f"{path}: line {line}: time_end must lie after time_start.")
+    repeated = rates["source"][rates["source"].duplicated()]
+    if not repeated.empty:
+        raise TableError(
+            f"{path}: line {repeated.index[0]}: source {repeated.iloc[0]!r} stands there twice. Keep one row each."
+        )
