@@ -1,0 +1,89 @@
+"""Load and tide Love numbers as labelled tables: the shipped one, or computed afresh."""
+
+import numpy as np
+import xarray as xr
+
+from massfingerprint.bundled import open_bundled
+from massfingerprint.earth._radial import surface_numbers
+from massfingerprint.earth.layers import EarthModel, prem
+from massfingerprint.errors import InputError, nearest_names
+
+MODELS = {"prem": prem}
+_MEANING = {
+    "h_load": "load Love number h', vertical",
+    "l_load": "load Love number l', horizontal",
+    "k_load": "load Love number k', potential",
+    "h_tide": "tidal Love number h, vertical",
+    "l_tide": "tidal Love number l, horizontal",
+    "k_tide": "tidal Love number k, potential",
+}
+
+
+def compute_love_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1.0) -> xr.Dataset:
+    """Integrate the radial equations of an Earth model.
+
+    Parameters
+    ----------
+    model : EarthModel
+        Shells with a solid surface.
+    max_degree : int
+        1 or more.
+    refinement : float
+        Factor on the number of steps.
+
+    Returns
+    -------
+    Dataset (degree)
+        As :func:`love_numbers`.
+    """
+    numbers = surface_numbers(model, max_degree, refinement=refinement)
+    variables = {
+        name: ("degree", getattr(numbers, name), {"units": "1", "long_name": meaning})
+        for name, meaning in _MEANING.items()
+    }
+    return xr.Dataset(
+        variables,
+        coords={"degree": ("degree", np.arange(max_degree + 1), {"long_name": "spherical-harmonic degree"})},
+        attrs={
+            "reference_frame": "CE",
+            "radius": model.radius,
+            "mean_density": model.mean_density,
+            "surface_gravity": model.surface_gravity,
+            "source": f"{model.source}; radial equations integrated by massfingerprint",
+        },
+    )
+
+
+def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool = False) -> xr.Dataset:
+    """Load and tide Love numbers of a built-in Earth.
+
+    Parameters
+    ----------
+    model : str
+        ``"prem"``: isotropic (Voigt), 1 s, the ocean replaced by upper crust to 6371 km.
+    max_degree : int
+        Highest degree, 1 or more. The shipped table ends at 2048; higher degrees are computed (seconds).
+    recompute : bool
+        Integrate the radial equations instead of reading the shipped table.
+
+    Returns
+    -------
+    Dataset (degree)
+        Dimensionless ``h_load l_load k_load h_tide l_tide k_tide``, degree from 0, degree 1 in CE. The tide columns are 0 at
+        degrees 0 and 1; k' and l' are 0 at degree 0. Attributes: ``reference_frame``, ``radius`` [m], ``mean_density``
+        [kg m-3], ``surface_gravity`` [m s-2], ``source``.
+
+    Raises
+    ------
+    InputError
+        If the model is unknown or the degree is not a whole number of 1 or more.
+    """
+    if model not in MODELS:
+        raise InputError(f"model: no Earth named {model!r}. {nearest_names(str(model), tuple(MODELS))}")
+    if isinstance(max_degree, bool) or not isinstance(max_degree, (int, np.integer)) or max_degree < 1:
+        raise InputError(f"max_degree: must be a whole number of 1 or more, got {max_degree!r}.")
+    if not recompute:
+        shipped = open_bundled(f"love_numbers_{model}.nc")
+        if max_degree < shipped.sizes["degree"]:
+            return shipped.isel(degree=slice(0, int(max_degree) + 1))
+    return compute_love_numbers(MODELS[model](), int(max_degree))

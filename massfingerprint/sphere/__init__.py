@@ -1,0 +1,1 @@
+"""Geometry and transforms: grids, spherical harmonics, points."""

@@ -1,0 +1,195 @@
+"""Spherical-harmonic transforms on arrays: analysis, synthesis, coefficient layouts.
+
+Inside, a real field is held as complex orthonormal coefficients a_lm (m >= 0, Condon-Shortley phase), ordered by order, then
+degree (the layout of ducc0). At the rim the same field is held as real coefficients (2, n): C and S of the real orthonormal
+functions without that phase.  Source: ducc0 documentation; relation of the two derived from f = sum_m>0 2 Re(a_lm Y_lm).
+"""
+
+from dataclasses import dataclass
+from functools import cached_property, lru_cache
+
+import ducc0
+import numpy as np
+from numpy.typing import NDArray
+
+from massfingerprint import options
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+Index = NDArray[np.int64]
+
+
+def coefficient_count(max_degree: int) -> int:
+    """Number of (degree, order >= 0) pairs up to ``max_degree``."""
+    return (max_degree + 1) * (max_degree + 2) // 2
+
+
+def degree_of_count(count: int) -> int:
+    """Highest degree of a triangle of ``count`` coefficients."""
+    return round((float(np.sqrt(8.0 * count + 1.0)) - 3.0) / 2.0)
+
+
+@lru_cache(maxsize=16)
+def degrees_and_orders(max_degree: int) -> tuple[Index, Index]:
+    """Degree and order of each coefficient (n,), read-only."""
+    order = np.repeat(np.arange(max_degree + 1), np.arange(max_degree + 1, 0, -1))
+    degree = np.concatenate([np.arange(m, max_degree + 1) for m in range(max_degree + 1)])
+    for values in (degree, order):
+        values.setflags(write=False)
+    return degree, order
+
+
+def index_of(degree: int, order: int, max_degree: int) -> int:
+    """Position of (degree, order) in a triangle up to ``max_degree``."""
+    return order * (2 * max_degree + 1 - order) // 2 + degree
+
+
+def resized(coefficients: NDArray, max_degree: int) -> NDArray:
+    """Return (..., n) coefficients cut at, or padded with zeros to, ``max_degree``."""
+    held = degree_of_count(coefficients.shape[-1])
+    if held == max_degree:
+        return coefficients.copy()
+    shared = min(held, max_degree)
+    degree, order = degrees_and_orders(shared)
+    out = np.zeros((*coefficients.shape[:-1], coefficient_count(max_degree)), dtype=coefficients.dtype)
+    target = order * (2 * max_degree + 1 - order) // 2 + degree
+    source = order * (2 * held + 1 - order) // 2 + degree
+    out[..., target] = coefficients[..., source]
+    return out
+
+
+def _phase(max_degree: int) -> Array:
+    order = degrees_and_orders(max_degree)[1]
+    return np.where(order == 0, 1.0, np.sqrt(2.0) * (1.0 - 2.0 * (order % 2)))
+
+
+def real_from_complex(coefficients: Complex) -> Array:
+    """Return the real pair (..., 2, n) of (..., n) complex coefficients."""
+    phase = _phase(degree_of_count(coefficients.shape[-1]))
+    return np.stack([phase * coefficients.real, -phase * coefficients.imag + 0.0], axis=-2)
+
+
+def complex_from_real(pairs: NDArray) -> Complex:
+    """Return the complex coefficients (..., n) of a real pair (..., 2, n); the sine part of order 0 is ignored."""
+    max_degree = degree_of_count(pairs.shape[-1])
+    phase, order = _phase(max_degree), degrees_and_orders(max_degree)[1]
+    return (pairs[..., 0, :] - 1j * np.where(order == 0, 0.0, pairs[..., 1, :])) / phase
+
+
+def analyse(rings: Array, max_degree: int, first_azimuth: float) -> Complex:
+    """Coefficients (..., n) of fields (..., nlat, nlon) on cell-centred rings, north first and eastward.
+
+    The transform is always taken to the highest degree the rings carry and then cut: taken to a lower degree, the library's
+    quadrature lets the degrees above leak into those below.
+    """
+    lead, (nlat, nlon) = rings.shape[:-2], rings.shape[-2:]
+    full = nlat - 1
+    degree, order = degrees_and_orders(max_degree)
+    kept = order * (2 * full + 1 - order) // 2 + degree
+    fields = rings.reshape((-1, nlat, nlon))
+    out = np.empty((fields.shape[0], kept.size), dtype=np.complex128)
+    for field, row in zip(fields, out, strict=True):
+        row[:] = ducc0.sht.analysis_2d(
+            map=field[None],
+            spin=0,
+            lmax=full,
+            mmax=max_degree,
+            geometry="F1",
+            phi0=first_azimuth,
+            nthreads=options.threads(),
+        )[0, kept]
+    return out.reshape((*lead, -1))
+
+
+def synthesise(coefficients: Complex, shape: tuple[int, int], first_azimuth: float) -> Array:
+    """Fields (..., nlat, nlon) on cell-centred rings, north first and eastward, of coefficients (..., n)."""
+    lead = coefficients.shape[:-1]
+    rows = np.ascontiguousarray(coefficients.reshape((-1, coefficients.shape[-1])), dtype=np.complex128)
+    out = np.empty((rows.shape[0], *shape))
+    for row, field in zip(rows, out, strict=True):
+        ducc0.sht.synthesis_2d(
+            alm=row[None],
+            map=field[None],
+            spin=0,
+            lmax=degree_of_count(row.size),
+            geometry="F1",
+            phi0=first_azimuth,
+            nthreads=options.threads(),
+        )
+    return out.reshape((*lead, *shape))
+
+
+def synthesise_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Array:
+    """Values (..., npoint) at points (radians): each point is a ring of one cell, so Legendre functions are exact."""
+    lead = coefficients.shape[:-1]
+    rows = np.ascontiguousarray(coefficients.reshape((-1, 1, coefficients.shape[-1])), dtype=np.complex128)
+    count = colatitude.size
+    if count == 0 or rows.shape[0] == 0:
+        return np.zeros((*lead, count))
+    values = ducc0.sht.synthesis(
+        alm=rows,
+        theta=np.ascontiguousarray(colatitude, dtype=np.float64),
+        phi0=np.ascontiguousarray(azimuth, dtype=np.float64),
+        nphi=np.ones(count, dtype=np.uint64),
+        ringstart=np.arange(count, dtype=np.uint64),
+        spin=0,
+        lmax=degree_of_count(coefficients.shape[-1]),
+        nthreads=options.threads(),
+    )
+    return values.reshape((*lead, count))
+
+
+@dataclass(frozen=True)
+class GaussLegendreRings:
+    """Rings on which synthesis and analysis up to ``max_degree`` are adjoint under the quadrature weights.
+
+    Parameters
+    ----------
+    max_degree : int
+        Degree of the coefficients taken and given.
+    factor_degree : int
+        Degree of a factor that fields are multiplied with on the rings; the product is then analysed without aliasing.
+    """
+
+    max_degree: int
+    factor_degree: int
+
+    @cached_property
+    def shape(self) -> tuple[int, int]:
+        """Rings and cells per ring that make the quadrature of two fields times the factor exact."""
+        total = 2 * self.max_degree + self.factor_degree
+        return total // 2 + 1, ducc0.fft.good_size(total + 1, True)
+
+    @cached_property
+    def _ring_weights(self) -> Array:
+        return ducc0.sht.get_gridweights("GL", self.shape[0]) / self.shape[1]
+
+    def synthesise(self, coefficients: Complex) -> Array:
+        """Field (nring, ncell) of coefficients (n,) of any degree."""
+        return ducc0.sht.synthesis_2d(
+            alm=coefficients[None],
+            spin=0,
+            lmax=degree_of_count(coefficients.size),
+            geometry="GL",
+            ntheta=self.shape[0],
+            nphi=self.shape[1],
+            nthreads=options.threads(),
+        )[0]
+
+    def analyse(self, field: Array) -> Complex:
+        """Coefficients (n,) up to ``max_degree`` of a field (nring, ncell)."""
+        return ducc0.sht.adjoint_synthesis_2d(
+            map=field[None],
+            spin=0,
+            lmax=self.max_degree,
+            geometry="GL",
+            ringfactor=self._ring_weights,
+            nthreads=options.threads(),
+        )[0]
+
+
+def inner_product(first: Complex, second: Complex) -> float:
+    """Integral over the unit sphere of the product of two real fields given by coefficients (n,) of one degree."""
+    zonal = degree_of_count(first.size) + 1
+    product = first.real * second.real + first.imag * second.imag
+    return float(2.0 * product.sum() - product[:zonal].sum())
