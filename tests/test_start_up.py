@@ -6,6 +6,8 @@ import sys
 
 import pytest
 
+import massfingerprint
+
 HEAVY = ["xarray", "pandas", "pint", "scipy", "matplotlib", "pyshtools", "dask", "geopandas", "shapely"]
 PROBE = "import json, sys; print(json.dumps([m for m in {heavy!r} if m in sys.modules]))"
 
@@ -33,8 +35,6 @@ def test_the_probe_notices_a_heavy_import():
 
 
 def test_every_public_name_resolves_and_is_documented():
-    import massfingerprint
-
     for name in massfingerprint.__all__:
         thing = getattr(massfingerprint, name)
         assert len(thing.__doc__.splitlines()) > 2, name

@@ -107,7 +107,7 @@ def test_wrong_site_files(tmp_path, text, error, message):
 def test_other_encodings_and_missing_files(tmp_path):
     with pytest.raises(TableError, match="is not UTF-8 text"):
         read_sites(write(tmp_path, "site,lat,lon\nMaré,1,2\n", "latin-1"))
-    with pytest.raises(MissingFileError, match="nowhere.csv: there is no such file"):
+    with pytest.raises(MissingFileError, match=r"nowhere.csv: there is no such file"):
         read_sites(tmp_path / "nowhere.csv")
 
 

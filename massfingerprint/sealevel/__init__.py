@@ -1,0 +1,1 @@
+"""The sea-level equation: solver, fingerprints, values at sites."""

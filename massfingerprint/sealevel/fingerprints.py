@@ -1,0 +1,215 @@
+"""Fingerprints: the patterns of relative sea level, sea surface, geoid and bedrock that a load leaves."""
+
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from massfingerprint import vocabulary
+from massfingerprint.earth.frames import check_frame
+from massfingerprint.earth.response import coefficient_factors
+from massfingerprint.earth.rotation import length_of_day_change, polar_motion, rotation_vector
+from massfingerprint.errors import InputError, NotConvergedError, nearest_names
+from massfingerprint.sealevel._equation import Solution, solve
+from massfingerprint.sealevel.solver import Prepared
+from massfingerprint.sphere import _transform
+from massfingerprint.sphere.grids import Grid, grid_of
+from massfingerprint.sphere.harmonics import check_finite, labelled
+
+Array = NDArray[np.float64]
+Complex = NDArray[np.complex128]
+
+FIELDS = ("relative_sea_level", "sea_surface", "geoid", "bedrock_up")
+_SCALARS = ("polar_motion_x", "polar_motion_y", "length_of_day_change")
+_ACCOUNT = {
+    "rounds": "products with the ocean formed",
+    "residual": "relative residual of the sea-level equation",
+    "mass_residual": "relative mass left unbalanced",
+    "converged": "1 where the tolerance was reached",
+}
+_SMALLEST_TOLERANCE = 1e-14  # below, rounding keeps the residual from falling
+
+
+def _check_load(load: xr.DataArray) -> tuple[xr.DataArray, Grid, bool, float]:
+    """Load as (..., lat, lon), its grid, whether it is per gigatonne, and the factor to kg m-2 (Gt-1)."""
+    if not isinstance(load, xr.DataArray):
+        raise InputError(f"load: must be a DataArray (..., lat, lon), got {type(load).__name__}. Use spread_mass(...).")
+    unit, scale = vocabulary.require(load.attrs, ("kg m-2", "kg m-2 Gt-1"), argument="load")
+    grid = grid_of(load, argument="load")
+    check_finite(load, argument="load")
+    return load.transpose(..., "lat", "lon"), grid, unit == "kg m-2 Gt-1", scale
+
+
+def _check_choices(outputs: tuple[str, ...], frame: str, tolerance: float, on_failure: str) -> tuple[str, ...]:
+    names = (outputs,) if isinstance(outputs, str) else tuple(outputs)
+    for name in names:
+        if name not in FIELDS:
+            raise InputError(f"outputs: no field {name!r}. {nearest_names(str(name), FIELDS)}")
+    if not names:
+        raise InputError(f"outputs: name at least one of {', '.join(FIELDS)}.")
+    check_frame(frame)
+    if not _SMALLEST_TOLERANCE <= tolerance < 1.0:
+        raise InputError(f"tolerance: must lie between {_SMALLEST_TOLERANCE:g} and 1, got {tolerance!r}.")
+    if on_failure not in ("raise", "return"):
+        raise InputError(f"on_failure: must be 'raise' or 'return', got {on_failure!r}.")
+    return names
+
+
+def _field_coefficients(prepared: Prepared, name: str, frame: str, solution: Solution) -> Complex:
+    """Coefficients (n,) in m of one field, each from its own sum."""
+    degree, order = _transform.degrees_and_orders(prepared.max_degree)
+    kind = "geoid" if name == "sea_surface" else name
+    factors = coefficient_factors(prepared.love, kind, degree, order, rotation=prepared.rotation, reference_frame=frame)
+    out = factors * solution.load
+    if name in ("relative_sea_level", "sea_surface"):
+        out[0] += solution.uniform * np.sqrt(4.0 * np.pi)
+    return out
+
+
+def _scalars(prepared: Prepared, solution: Solution) -> tuple[float, float, float]:
+    if not prepared.rotation:
+        return 0.0, 0.0, 0.0
+    load = _transform.resized(solution.load, 2)
+    pairs = _transform.real_from_complex(load)[:, [2, 4, 5]]
+    vector = rotation_vector(pairs, prepared.love)
+    x, y = polar_motion(vector)
+    return float(x), float(y), float(length_of_day_change(vector))
+
+
+def _refuse_unconverged(solution: Solution, place: dict[str, Any], tolerance: float) -> None:
+    where = ", ".join(f"{dim} {value}" for dim, value in place.items())
+    raise NotConvergedError(
+        f"load{f' at {where}' if where else ''}: residual {solution.residual:.3g} after {solution.rounds} rounds, "
+        f"tolerance {tolerance:g}. Loosen tolerance, check water_density and the Love numbers, or pass on_failure='return'."
+    )
+
+
+def solve_fingerprints(
+    prepared: Prepared,
+    load: xr.DataArray,
+    *,
+    outputs: tuple[str, ...] = ("relative_sea_level",),
+    reference_frame: str = "CM",
+    tolerance: float = 1e-8,
+    on_failure: str = "raise",
+) -> xr.Dataset:
+    """Solve the sea-level equation for each load.
+
+    Parameters
+    ----------
+    prepared : Prepared
+        From :func:`prepare_solver`.
+    load : DataArray (..., lat, lon)
+        Surface mass, positive = added, units ``kg m-2`` or ``kg m-2 Gt-1`` (or convertible to them), on any regular global
+        cell-centred grid. Degrees beyond its band limit are 0.
+    outputs : tuple of str
+        Any of ``relative_sea_level``, ``sea_surface``, ``geoid``, ``bedrock_up``.
+    reference_frame : str
+        Frame of degree 1 of all but relative sea level: ``CM``, ``CF``, ``CE``, ``CL`` or ``CH``.
+    tolerance : float
+        On the relative residual, 1e-14 to 1.
+    on_failure : str
+        ``"raise"``, or ``"return"`` to get unconverged answers with ``converged`` 0.
+
+    Returns
+    -------
+    Dataset (..., lat, lon)
+        On the load's grid, fields defined everywhere: m for a load in kg m-2, mm Gt-1 for kg m-2 Gt-1, positive = rise or
+        uplift; ``<name>_coefficients`` (..., part, coefficient); ``polar_motion_x``, ``polar_motion_y`` [mas],
+        ``length_of_day_change`` [ms] (per Gt likewise; 0 without rotation); the account ``rounds``, ``residual``,
+        ``mass_residual``, ``converged``; ``load_extent``, 1 in cells that carry load.
+
+    Raises
+    ------
+    GridError
+        If the load's grid is not regular and global, or a value is not finite (its place is named).
+    UnitsError
+        If the load has no units or the wrong ones.
+    InputError
+        If a choice is not known.
+    NotConvergedError
+        If a solve misses its tolerance and ``on_failure`` is ``"raise"``.
+    """
+    names = _check_choices(outputs, reference_frame, tolerance, on_failure)
+    load, grid, per_gigatonne, scale = _check_load(load)
+    lead = load.dims[:-2]
+    shape = load.shape[:-2]
+    band = min(grid.band_limit, prepared.max_degree)
+    flat = load.values.reshape((-1, grid.nlat, grid.nlon))
+    store = _Store(names, flat.shape[0], prepared.max_degree, grid)
+    for position, values in enumerate(flat):
+        ice = _transform.analyse(grid.to_rings(values) * scale, band, grid.first_azimuth)
+        solution = solve(prepared.operator, _transform.resized(ice, prepared.max_degree), tolerance=tolerance)
+        if not solution.converged and on_failure == "raise":
+            index = np.unravel_index(position, shape) if shape else ()
+            place = {str(d): load[d].values[i] if d in load.coords else i for d, i in zip(lead, index, strict=True)}
+            _refuse_unconverged(solution, place, tolerance)
+        store.put(position, prepared, solution, reference_frame)
+    out = store.dataset(load, per_gigatonne)
+    out["load_extent"] = (
+        (*lead, "lat", "lon"),
+        (load.values != 0.0).astype(np.int8),
+        {"long_name": "1 in cells that carry load"},
+    )
+    return out.assign_attrs(_attributes(prepared, reference_frame, band))
+
+
+def _attributes(prepared: Prepared, frame: str, load_degree: int) -> dict[str, Any]:
+    return {
+        "reference_frame": frame,
+        "max_degree": prepared.max_degree,
+        "load_max_degree": load_degree,
+        "rotation": "on" if prepared.rotation else "off",
+        "water_density": prepared.water_density,
+        "ocean_area": prepared.ocean_area,
+        "gigatonnes_per_millimetre": prepared.gigatonnes_per_millimetre,
+        "love_numbers": str(prepared.love.attrs.get("source", "given by the user")),
+        "comment": "Geodetic latitudes are used as spherical latitudes. Fields are defined everywhere, land included.",
+    }
+
+
+class _Store:
+    """Arrays of the results, filled load by load."""
+
+    def __init__(self, names: tuple[str, ...], count: int, max_degree: int, grid: Grid) -> None:
+        self._names, self._grid = names, grid
+        self._fields = {name: np.empty((count, grid.nlat, grid.nlon)) for name in names}
+        self._pairs = {name: np.empty((count, 2, _transform.coefficient_count(max_degree))) for name in names}
+        self._scalars = np.empty((count, len(_SCALARS)))
+        self._account: dict[str, NDArray] = {
+            "rounds": np.empty(count, dtype=np.int32),
+            "residual": np.empty(count),
+            "mass_residual": np.empty(count),
+            "converged": np.empty(count, dtype=np.int8),
+        }
+
+    def put(self, position: int, prepared: Prepared, solution: Solution, frame: str) -> None:
+        grid = self._grid
+        for name in self._names:
+            coefficients = _field_coefficients(prepared, name, frame, solution)
+            rings = _transform.synthesise(coefficients, (grid.nlat, grid.nlon), grid.first_azimuth)
+            self._fields[name][position] = grid.from_rings(rings)
+            self._pairs[name][position] = _transform.real_from_complex(coefficients)
+        self._scalars[position] = _scalars(prepared, solution)
+        for name, values in self._account.items():
+            values[position] = getattr(solution, name)
+
+    def dataset(self, load: xr.DataArray, per_gigatonne: bool) -> xr.Dataset:
+        lead, shape = load.dims[:-2], load.shape[:-2]
+        unit = 1e3 if per_gigatonne else 1.0  # m per (kg m-2) to mm per Gt
+        coords = {k: v for k, v in load.coords.items() if set(v.dims) <= set(lead)}
+        out = xr.Dataset(coords={**coords, "lat": load["lat"], "lon": load["lon"]})
+        for name in self._names:
+            attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
+            field = self._fields[name] if unit == 1.0 else self._fields[name].__imul__(unit)
+            out[name] = ((*lead, "lat", "lon"), field.reshape((*shape, *field.shape[-2:])), attrs)
+            pairs = labelled((self._pairs[name] * unit).reshape((*shape, *self._pairs[name].shape[1:])), lead, coords)
+            own = {"units": attrs["units"], "long_name": f"orthonormal coefficients of {attrs['long_name']}"}
+            out[f"{name}_coefficients"] = pairs.assign_attrs(own)
+        for column, name in enumerate(_SCALARS):
+            attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
+            out[name] = (lead, self._scalars[:, column].reshape(shape), attrs)
+        for name, meaning in _ACCOUNT.items():
+            out[name] = (lead, self._account[name].reshape(shape), {"long_name": meaning, "units": "1"})
+        return out

@@ -1,0 +1,144 @@
+"""Prepare the sea-level equation once for an ocean and an Earth; solve it for many loads."""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+import xarray as xr
+
+from massfingerprint.constants import KILOGRAMS_PER_GIGATONNE
+from massfingerprint.earth.response import coefficient_factors
+from massfingerprint.errors import GridError, InputError
+from massfingerprint.sealevel._equation import Operator
+from massfingerprint.sphere import _transform
+from massfingerprint.sphere.grids import Grid, grid_of
+from massfingerprint.sphere.harmonics import check_degree, check_finite
+
+_FRACTION_TOLERANCE = 1e-6  # room for float32 storage of 0 and 1
+
+
+@dataclass(frozen=True)
+class Prepared:
+    """A sea-level problem ready for loads; nothing in it changes.
+
+    Parameters
+    ----------
+    grid : Grid
+        Cells of the ocean fraction.
+    love : Dataset
+        Love numbers used, degrees 0 to ``max_degree``.
+    max_degree : int
+        Degree of the solution.
+    rotation : bool
+        Whether the rotational feedback is on.
+    water_density : float
+        kg m-3.
+    ocean_area : float
+        m2: 4 pi a^2 times the degree-0 mean of the ocean fraction.
+    operator : Operator
+        The arrays of the equation.
+    """
+
+    grid: Grid
+    love: xr.Dataset = field(repr=False)
+    max_degree: int
+    rotation: bool
+    water_density: float
+    ocean_area: float
+    operator: Operator = field(repr=False)
+
+    @property
+    def gigatonnes_per_millimetre(self) -> float:
+        """Mass that raises this ocean by 1 mm on average, Gt mm-1."""
+        return self.ocean_area * self.water_density * 1e-3 / KILOGRAMS_PER_GIGATONNE.value
+
+    @property
+    def barystatic_per_gigatonne(self) -> float:
+        """Mean rise of this ocean for one gigatonne added to the land, mm Gt-1 (negative)."""
+        return -1.0 / self.gigatonnes_per_millimetre
+
+
+def _check_ocean(ocean: xr.DataArray) -> Grid:
+    if not isinstance(ocean, xr.DataArray):
+        raise InputError(
+            f"ocean: must be a DataArray (lat, lon), got {type(ocean).__name__}. Use ocean_fraction(0.25)."
+        )
+    if set(ocean.dims) != {"lat", "lon"}:
+        raise GridError(f"ocean: must have the dimensions lat and lon, got {ocean.dims}. Select one field first.")
+    grid = grid_of(ocean, argument="ocean")
+    check_finite(ocean, argument="ocean")
+    low, high = float(ocean.min()), float(ocean.max())
+    if low < -_FRACTION_TOLERANCE or high > 1.0 + _FRACTION_TOLERANCE:
+        raise GridError(
+            f"ocean: fractions must lie between 0 and 1, got {low:g} to {high:g}. Divide percentages by 100."
+        )
+    if high <= 0.0:
+        raise GridError("ocean: there is no water anywhere (all fractions are 0). Pass 1 where there is sea.")
+    return grid
+
+
+def _check_love(love: xr.Dataset, max_degree: int) -> xr.Dataset:
+    wanted = {"h_load", "l_load", "k_load", "h_tide", "k_tide"}
+    missing = sorted(wanted - set(love.data_vars)) if isinstance(love, xr.Dataset) else sorted(wanted)
+    if missing:
+        raise InputError(f"love: lacks {', '.join(missing)}. Use love_numbers('prem', max_degree={max_degree}).")
+    lost = [name for name in ("radius", "mean_density", "surface_gravity") if name not in love.attrs]
+    if lost:
+        raise InputError(f"love: lacks the attributes {', '.join(lost)}. Keep attrs when changing the table.")
+    needed = max(max_degree, 2)
+    degree = love["degree"].values
+    if degree.size <= needed or not np.array_equal(degree[: needed + 1], np.arange(needed + 1)):
+        raise InputError(
+            f"love: degrees 0 to {needed} are needed, got {degree[0]} to {degree[-1]}. Ask for max_degree={needed}."
+        )
+    table = love.isel(degree=slice(0, needed + 1))
+    for name in sorted(wanted):
+        if not np.isfinite(table[name].values).all():
+            raise InputError(f"love: {name} holds values that are not finite.")
+    return table.copy(deep=True)
+
+
+def prepare_solver(
+    ocean: xr.DataArray, love: xr.Dataset, *, max_degree: int, rotation: bool = True, water_density: float = 1000.0
+) -> Prepared:
+    """Prepare the sea-level equation for one ocean and one Earth.
+
+    Parameters
+    ----------
+    ocean : DataArray (lat, lon)
+        Share of each cell that is sea, 0 to 1, on any regular global cell-centred grid.
+    love : Dataset (degree)
+        Love numbers at least to ``max_degree``, any frame.
+    max_degree : int
+        Degree of the solution, 1 or more; it may exceed the band limit of the ocean's grid.
+    rotation : bool
+        Let the load shift the rotation axis, and the shifted axis move the sea.
+    water_density : float
+        Density of the water that moves, kg m-3.
+
+    Returns
+    -------
+    Prepared
+        Frozen; reuse it for any number of loads.
+
+    Raises
+    ------
+    GridError
+        If the ocean's grid is not regular and global, or its values are not fractions, or all 0.
+    InputError
+        If the degree, the density or the Love numbers cannot be used.
+    """
+    grid = _check_ocean(ocean)
+    max_degree = check_degree(max_degree, lowest=1)
+    if not (np.isfinite(water_density) and water_density > 0.0):
+        raise InputError(f"water_density: must be a positive number of kg m-3, got {water_density!r}.")
+    table = _check_love(love, max_degree)
+    ocean_degree = min(grid.band_limit, 2 * max_degree)  # higher degrees cannot reach the solution
+    fraction = _transform.analyse(grid.to_rings(ocean.transpose("lat", "lon").values), ocean_degree, grid.first_azimuth)
+    rings = _transform.GaussLegendreRings(max_degree, ocean_degree)
+    degree, order = _transform.degrees_and_orders(max_degree)
+    response = coefficient_factors(table, "relative_sea_level", degree, order, rotation=rotation)
+    operator = Operator(
+        rings, rings.synthesise(fraction), _transform.resized(fraction, max_degree), response, float(water_density)
+    )
+    area = float(fraction[0].real * np.sqrt(4.0 * np.pi)) * float(love.attrs["radius"]) ** 2
+    return Prepared(grid, table, max_degree, bool(rotation), float(water_density), area, operator)
