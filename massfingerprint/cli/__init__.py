@@ -1,0 +1,64 @@
+"""The command line: one file per command, loaded when it is called. Data on stdout, talk on stderr."""
+
+import sys
+from collections.abc import Sequence
+from importlib import import_module
+
+import click
+
+from massfingerprint import __version__
+from massfingerprint.errors import MassFingerprintError
+
+_COMMANDS = {
+    "earth": "Love numbers of the built-in Earth.",
+    "sites": "Sea level at named coasts from published mass rates.",
+}
+
+
+class _LazyGroup(click.Group):
+    """Commands whose module, and what it imports, is loaded only when they run."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        del ctx
+        return sorted(_COMMANDS)
+
+    def get_command(self, ctx: click.Context, cmd_name: str) -> click.Command | None:
+        del ctx
+        if cmd_name not in _COMMANDS:
+            return None
+        return import_module(f"massfingerprint.cli.{cmd_name}").command
+
+    def format_commands(self, ctx: click.Context, formatter: click.HelpFormatter) -> None:
+        del ctx
+        with formatter.section("Commands"):
+            formatter.write_dl(sorted(_COMMANDS.items()))
+
+
+@click.command(cls=_LazyGroup, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(__version__, prog_name="massfingerprint")
+def group() -> None:
+    """From mass change in gigatonnes to sea level at a coast in millimetres.
+
+    Results are for screening: local datums, surveys and licensed practice decide.
+    """
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command line; return 0 if fine, 1 for input that cannot be used (one line on stderr), 2 for wrong usage."""
+    try:
+        outcome = group.main(args=arguments, prog_name="massfingerprint", standalone_mode=False)
+    except MassFingerprintError as error:
+        click.echo(f"massfingerprint: {error}", err=True)
+        return 1
+    except click.UsageError as error:
+        error.show()
+        return 2
+    except click.exceptions.Abort:
+        click.echo("massfingerprint: stopped; nothing was written.", err=True)
+        return 130
+    return outcome if isinstance(outcome, int) else 0
+
+
+def entry() -> None:
+    """Console entry point."""
+    sys.exit(main())

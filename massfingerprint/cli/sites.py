@@ -1,0 +1,186 @@
+"""``massfingerprint sites``: millimetres per year at named coasts from a table of mass rates."""
+
+import math
+import textwrap
+from dataclasses import dataclass
+from pathlib import Path
+
+import click
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from massfingerprint.constants import GIGATONNES_PER_MILLIMETRE
+from massfingerprint.earth.love import love_numbers
+from massfingerprint.files.atomic import write_text
+from massfingerprint.files.tables import read_rates
+from massfingerprint.load.ocean import ocean_fraction
+from massfingerprint.load.regions import regions
+from massfingerprint.load.spread import spread_mass
+from massfingerprint.sealevel.fingerprints import solve_fingerprints
+from massfingerprint.sealevel.sites import RESOLVED_BEYOND, at_sites
+from massfingerprint.sealevel.solver import Prepared, prepare_solver
+from massfingerprint.sphere.points import read_sites
+
+_CAUTION = "For screening only: local datums, surveys and licensed practice decide."
+_LEFT_OUT = (
+    "Not included: ocean dynamics, thermal expansion and salinity, atmosphere, glacial isostatic adjustment, local land motion, "
+    "ice not in the table of rates."
+)
+
+
+@dataclass(frozen=True)
+class Answer:
+    """Rates at sites: the table of mass rates, the prepared problem and patterns at sites in mm per Gt."""
+
+    rates: pd.DataFrame
+    prepared: Prepared
+    patterns: xr.Dataset
+
+    def by_source(self, name: str) -> np.ndarray:
+        """Rate (source, site) in mm yr-1 of one field."""
+        return self.patterns[name].values * self.rates["mass_rate"].to_numpy()[:, None]
+
+    def sigma(self, name: str) -> np.ndarray:
+        """Standard uncertainty (site,) in mm yr-1 of the total, from the mass rates alone, taken as independent."""
+        return np.sqrt(
+            ((self.patterns[name].values * self.rates["mass_rate_sigma"].to_numpy()[:, None]) ** 2).sum(axis=0)
+        )
+
+    @property
+    def global_mean(self) -> tuple[float, float]:
+        """Barystatic rate and its standard uncertainty, mm yr-1."""
+        factor = self.prepared.gigatonnes_per_millimetre
+        return -self.rates["mass_rate"].sum() / factor, math.sqrt((self.rates["mass_rate_sigma"] ** 2).sum()) / factor
+
+
+def _answer(rates_file: Path, sites_file: Path, max_degree: int, spacing: float) -> Answer:
+    rates, sites = read_rates(rates_file), read_sites(sites_file)
+    outlines = regions(*rates["source"])
+    ocean = ocean_fraction(spacing)
+    prepared = prepare_solver(ocean, love_numbers(max_degree=max(max_degree, 2)), max_degree=max_degree)
+    load = spread_mass(outlines, ocean)
+    patterns = solve_fingerprints(prepared, load, outputs=("relative_sea_level", "bedrock_up"))
+    return Answer(rates, prepared, at_sites(patterns, sites))
+
+
+def _table(answer: Answer) -> pd.DataFrame:
+    """One row per site, numbers in mm yr-1."""
+    sea = answer.by_source("relative_sea_level")
+    mean = answer.global_mean[0]
+    out = pd.DataFrame(
+        {"site": answer.patterns["site"].values, "lat": answer.patterns["lat"], "lon": answer.patterns["lon"]}
+    )
+    for source, values in zip(answer.rates["source"], sea, strict=True):
+        out[f"{source} [mm yr-1]"] = values
+    out["total [mm yr-1]"] = sea.sum(axis=0)
+    out["total sigma [mm yr-1]"] = answer.sigma("relative_sea_level")
+    out["ratio to global mean [1]"] = sea.sum(axis=0) / mean if mean else np.nan
+    out["vertical land motion, elastic [mm yr-1]"] = answer.by_source("bedrock_up").sum(axis=0)
+    out["truncation [mm yr-1]"] = answer.by_source("relative_sea_level_truncation").sum(axis=0)
+    out["total tapered [mm yr-1]"] = answer.by_source("relative_sea_level_tapered").sum(axis=0)
+    out["not resolved"] = _unresolved(answer)
+    return out
+
+
+def _unresolved(answer: Answer) -> list[str]:
+    """Name, per site, the mass sources within the distance at which the solver's degrees do not resolve their load."""
+    near = answer.patterns["resolved"].values == 0
+    distance = answer.patterns["distance_to_load"].values
+    names = answer.rates["source"].to_numpy()
+    return [
+        "; ".join(f"{n} {d:.0f} km" for n, d in zip(names[k], distance[k, i], strict=True))
+        for i, k in enumerate(near.T)
+    ]
+
+
+def _headline(answer: Answer) -> list[str]:
+    mean, sigma = answer.global_mean
+    first, last = answer.rates["time_start"].min(), answer.rates["time_end"].max()
+    factor = answer.prepared.gigatonnes_per_millimetre
+    return [
+        f"Global mean (barystatic): {mean:+.3f} +- {sigma:.3f} mm/yr, {first:%Y-%m-%d} to {last:%Y-%m-%d}",
+        f"1 mm over this ocean is {factor:.2f} Gt (tables often use {GIGATONNES_PER_MILLIMETRE.value}).",
+    ]
+
+
+def _split(source: str) -> tuple[str, str]:
+    """Name of a mass source on two lines of a column head."""
+    first, _, rest = source.partition("_")
+    return (first, rest.replace("_", " ")) if rest else ("", first)
+
+
+def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
+    sources = list(answer.rates["source"])
+    width = max(12, *(len(word) + 2 for source in sources for word in _split(source)))
+    heads = [[_split(source)[line] for source in sources] for line in (0, 1)]
+    lines = [
+        f"{'Relative sea level,':26}{''.join(f'{word:>{width}}' for word in heads[0])}{'':18}{'ratio':>8}{'land':>9}{'trun-':>8}",
+        f"{'mm/yr':26}{''.join(f'{word:>{width}}' for word in heads[1])}{'total':>9}{'':9}{'to mean':>8}{'up':>9}{'cation':>8}",
+    ]
+    for _, row in table.iterrows():
+        parts = "".join(f"{row[f'{source} [mm yr-1]']:+{width}.3f}" for source in sources)
+        lines.append(
+            f"{row['site'][:25]:26}{parts}{row['total [mm yr-1]']:+9.3f} +- {row['total sigma [mm yr-1]']:5.3f}"
+            f"{row['ratio to global mean [1]']:8.2f}{row['vertical land motion, elastic [mm yr-1]']:+9.3f}"
+            f"{row['truncation [mm yr-1]']:+8.3f}{'  not resolved: ' + row['not resolved'] if row['not resolved'] else ''}"
+        )
+    return lines
+
+
+def _notes(answer: Answer) -> list[str]:
+    degree = answer.prepared.max_degree
+    text = (
+        "+-: 1 standard uncertainty (1 sigma) of the mass rates, taken as independent between sources; Love numbers add about 1 %; "
+        "where within a source the mass was lost is not in the table, it is spread evenly over its ice. ratio to mean: total "
+        "over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
+        f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
+        f"not resolved: within {RESOLVED_BEYOND:g} km of the ice named, where higher degrees would change the value."
+    )
+    return [line for paragraph in (text, _LEFT_OUT, _CAUTION) for line in textwrap.wrap(paragraph, 110)]
+
+
+@click.command(name="sites")
+@click.option(
+    "--rates",
+    "rates_file",
+    required=True,
+    type=click.Path(path_type=Path),
+    help="CSV of mass rates, Gt/yr, negative = loss.",
+)
+@click.option(
+    "--sites",
+    "sites_file",
+    required=True,
+    type=click.Path(path_type=Path),
+    help="CSV with columns site, lat, lon (degrees).",
+)
+@click.option(
+    "--max-degree",
+    default=512,
+    show_default=True,
+    type=click.IntRange(1, 4096),
+    help="Spherical-harmonic degree of the solution.",
+)
+@click.option(
+    "--spacing", default=0.25, show_default=True, type=float, help="Grid spacing in degrees; must divide 180."
+)
+@click.option(
+    "--csv",
+    "csv_file",
+    type=click.Path(path_type=Path),
+    help="Also write the table here, one row per site, full numbers.",
+)
+def command(rates_file: Path, sites_file: Path, max_degree: int, spacing: float, csv_file: Path | None) -> None:
+    """Print relative sea level in mm/yr at coasts, by mass source, from mass rates in Gt/yr.
+
+    Example: massfingerprint sites --rates data_small/published_rates.csv --sites data_small/coasts.csv
+    """
+    answer = _answer(rates_file, sites_file, max_degree, spacing)
+    table = _table(answer)
+    click.echo("\n".join([*_headline(answer), "", *_grid_of_words(answer, table), "", *_notes(answer)]))
+    for line in sorted(set(answer.rates["citation"])):
+        click.echo(f"Mass rates: {line}.", err=True)
+    if csv_file is not None:
+        write_text(table.to_csv(index=False, lineterminator="\n"), csv_file)
+        click.echo(f"Table written to {csv_file}.", err=True)
