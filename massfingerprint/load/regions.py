@@ -59,7 +59,7 @@ _REGIONS = {
         "antarctica", "antarctica", (-120.0, -80.0), "with the Evans Ice Stream, Berkner and Roosevelt islands"
     ),
     "antarctic_peninsula": _Region(
-        "antarctica", "antarctica", (-64.0, -70.0), "with Alexander Island and the South Shetlands, grid-north of Evans"
+        "antarctica", "antarctica", (-64.0, -70.0), "with Alexander Island and the South Shetlands, north of the Evans basin"
     ),
 }
 
