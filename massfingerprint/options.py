@@ -4,7 +4,7 @@ import os
 from collections.abc import Iterator
 from contextlib import AbstractContextManager, contextmanager
 
-from massfingerprint.errors import InputError
+from massfingerprint.arguments import whole_number
 
 _settings: dict[str, int] = {}
 
@@ -48,7 +48,5 @@ def set_options(*, threads: int | None = None) -> AbstractContextManager[None]:
     """
     previous = dict(_settings)
     if threads is not None:
-        if isinstance(threads, bool) or not isinstance(threads, int) or threads < 1:
-            raise InputError(f"threads: must be a whole number of 1 or more, got {threads!r}.")
-        _settings["threads"] = threads
+        _settings["threads"] = whole_number(threads, argument="threads", lowest=1)
     return _restored(previous)

@@ -7,16 +7,14 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from massfingerprint.errors import InputError, nearest_names
+from massfingerprint.arguments import one_of
 
 FRAMES = ("CE", "CM", "CF", "CL", "CH")
 
 
 def check_frame(frame: str, *, argument: str = "reference_frame") -> str:
     """Return a known frame name, or raise InputError offering the known ones."""
-    if frame not in FRAMES:
-        raise InputError(f"{argument}: no frame {frame!r}. {nearest_names(str(frame), FRAMES)}")
-    return frame
+    return one_of(frame, FRAMES, argument=argument, kind="frame")
 
 
 def degree_one_shift(h_load: float, l_load: float, frame: str) -> float:

@@ -3,10 +3,10 @@
 import numpy as np
 import xarray as xr
 
+from massfingerprint.arguments import one_of, whole_number
 from massfingerprint.bundled import open_bundled
 from massfingerprint.earth._radial import surface_numbers
 from massfingerprint.earth.layers import EarthModel, prem
-from massfingerprint.errors import InputError, nearest_names
 
 MODELS = {"prem": prem}
 _MEANING = {
@@ -78,12 +78,10 @@ def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool
     InputError
         If the model is unknown or the degree is not a whole number of 1 or more.
     """
-    if model not in MODELS:
-        raise InputError(f"model: no Earth named {model!r}. {nearest_names(str(model), tuple(MODELS))}")
-    if isinstance(max_degree, bool) or not isinstance(max_degree, (int, np.integer)) or max_degree < 1:
-        raise InputError(f"max_degree: must be a whole number of 1 or more, got {max_degree!r}.")
+    one_of(model, tuple(MODELS), argument="model", kind="Earth named")
+    max_degree = whole_number(max_degree, argument="max_degree", lowest=1)
     if not recompute:
         shipped = open_bundled(f"love_numbers_{model}.nc")
         if max_degree < shipped.sizes["degree"]:
-            return shipped.isel(degree=slice(0, int(max_degree) + 1))
-    return compute_love_numbers(MODELS[model](), int(max_degree))
+            return shipped.isel(degree=slice(0, max_degree + 1))
+    return compute_love_numbers(MODELS[model](), max_degree)

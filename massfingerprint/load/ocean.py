@@ -11,7 +11,7 @@ from massfingerprint.sphere.grids import regular_grid
 
 _FILE = "ocean_fraction_0.25deg.nc"
 _STORED_SPACING = 0.25
-_FINEST = 1.0 / 60.0  # degrees; 2 GB already, and nothing new below 0.25
+_MOST_RINGS = 180 * 60  # one arc minute: 2 GB already, and nothing new below 0.25
 
 
 def ocean_fraction(spacing: float = 0.25) -> xr.DataArray:
@@ -39,11 +39,9 @@ def ocean_fraction(spacing: float = 0.25) -> xr.DataArray:
     ------
     Natural Earth 1:10m land with the Antarctic grounding line (entry in ``bundled/source.toml``).
     """
-    if isinstance(spacing, bool) or not isinstance(spacing, int | float | np.integer | np.floating):
-        raise GridError(f"spacing: must be a number of degrees that divides 180, got {spacing!r}. Try 0.25, 0.5 or 1.")
-    if 0 < spacing < _FINEST * (1 - 1e-9):
-        raise GridError(f"spacing: finer than one arc minute ({_FINEST:.5f} degree) is not offered, got {spacing!r}.")
     grid = regular_grid(spacing)
+    if grid.nlat > _MOST_RINGS:
+        raise GridError(f"spacing: finer than one arc minute ({1 / 60:.5f} degree) is not offered, got {spacing!r}.")
     stored = open_bundled(_FILE)["ocean_fraction"]
     stored = stored.assign_coords(lon=stored["lon"] % 360.0).sortby(["lat", "lon"])
     rows = _means(np.sin(np.deg2rad(_edges(-90.0, stored.sizes["lat"]))), np.sin(np.deg2rad(_edges(-90.0, grid.nlat))))

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from shapely.geometry import Point, Polygon, box
 from shapely.geometry.base import BaseGeometry
 
+from massfingerprint.arguments import real_number, whole_number
 from massfingerprint.bundled import open_bundled
 from massfingerprint.constants import SPHERE_RADIUS
 from massfingerprint.errors import RegionError, nearest_names
@@ -59,7 +60,10 @@ _REGIONS = {
         "antarctica", "antarctica", (-120.0, -80.0), "with the Evans Ice Stream, Berkner and Roosevelt islands"
     ),
     "antarctic_peninsula": _Region(
-        "antarctica", "antarctica", (-64.0, -70.0), "with Alexander Island and the South Shetlands, north of the Evans basin"
+        "antarctica",
+        "antarctica",
+        (-64.0, -70.0),
+        "with Alexander Island and the South Shetlands, north of the Evans basin",
     ),
 }
 
@@ -127,18 +131,20 @@ def disc(name: str, lat: float, lon: float, radius_km: float, *, vertices: int =
     Raises
     ------
     RegionError
-        If the name is empty or a number is out of range.
+        If the name is empty.
+    InputError
+        If a number is out of range.
     """
     label = f"disc {name!r}"
     if not isinstance(name, str) or not name.strip():
         raise RegionError(f"disc: name must be text that is not empty, got {name!r}.")
-    _check_number(label, "lat", lat, bounds=(-90.0, 90.0))
-    _check_number(label, "lon", lon, bounds=(-360.0, 360.0))
-    _check_number(label, "radius_km", radius_km, bounds=(0.0, _LARGEST_DISC))
+    bounds = {"lat": (lat, -90.0, 90.0), "lon": (lon, -360.0, 360.0), "radius_km": (radius_km, 0.0, _LARGEST_DISC)}
+    for argument, (value, low, high) in bounds.items():
+        allowed = f"a number from {low:g} to {high:g}"
+        real_number(value, argument=f"{label}: {argument}", allowed=allowed, low=low, high=high)
     if radius_km == 0.0:
         raise RegionError(f"{label}: radius_km must be more than 0, got {radius_km!r}.")
-    if isinstance(vertices, bool) or not isinstance(vertices, int) or vertices < 12:
-        raise RegionError(f"{label}: vertices must be a whole number of 12 or more, got {vertices!r}.")
+    whole_number(vertices, argument=f"{label}: vertices", lowest=12)
     radius = radius_km * 1000.0 / SPHERE_RADIUS.value
     longitudes, latitudes = _circle(float(lat), float(lon), radius=radius, vertices=vertices)
     pole = 1 if lat >= 0.0 else -1
@@ -147,12 +153,6 @@ def disc(name: str, lat: float, lon: float, radius_km: float, *, vertices: int =
     )
     note = f"disc of {radius_km:g} km round {lat:g}, {lon:g} (latitude, longitude) on the sphere"
     return region_table([name.strip()], [outline], notes=[note])
-
-
-def _check_number(label: str, argument: str, value: float, *, bounds: tuple[float, float]) -> None:
-    real = isinstance(value, int | float | np.integer | np.floating) and not isinstance(value, bool)
-    if not real or not bounds[0] <= value <= bounds[1]:
-        raise RegionError(f"{label}: {argument} must be a number from {bounds[0]:g} to {bounds[1]:g}, got {value!r}.")
 
 
 def _circle(lat: float, lon: float, *, radius: float, vertices: int) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

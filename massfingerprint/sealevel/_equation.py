@@ -16,6 +16,7 @@ from massfingerprint.sphere._transform import GaussLegendreRings, inner_product
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
+_DIVERGED = 1e6  # growth of the answer over its first round that no convergent iteration shows
 _ROOT = np.sqrt(4.0 * np.pi)  # degree-0 coefficient of the constant 1
 
 
@@ -105,20 +106,21 @@ def solve(operator: Operator, ice: Complex, *, tolerance: float, max_rounds: int
     Returns
     -------
     Solution
-        Converged or not; a diverging iteration stops once the residual is not finite.
+        Converged or not; an iteration whose answer grows without bound is stopped early.
     """
     ice_mass = float(ice[0].real) * _ROOT
     barystatic = -ice_mass / (operator.water_density * operator.ocean[0].real * _ROOT)
     load = ice + operator.water_density * barystatic * operator.ocean
     sea_level, uniform = operator.sea_level(load, ice_mass)
-    residual, rounds = np.inf, 0
+    residual, rounds, first = np.inf, 0, 0.0
     while rounds < max_rounds and residual > tolerance:
         load = ice + operator.ocean_load(sea_level)
         following, uniform = operator.sea_level(load, ice_mass)
         size = _norm(following)
         residual = _norm(following - sea_level) / size if size > 0.0 else 0.0
         sea_level, rounds = following, rounds + 1
-        if not np.isfinite(residual):
+        first = first or size
+        if not size <= _DIVERGED * first:
             break
     weight = _norm(ice)
     unbalanced = abs(float(load[0].real)) / weight if weight > 0.0 else abs(float(load[0].real))

@@ -7,10 +7,11 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from massfingerprint import vocabulary
+from massfingerprint.arguments import one_of, real_number
 from massfingerprint.earth.frames import check_frame
 from massfingerprint.earth.response import coefficient_factors
 from massfingerprint.earth.rotation import length_of_day_change, polar_motion, rotation_vector
-from massfingerprint.errors import InputError, NotConvergedError, nearest_names
+from massfingerprint.errors import InputError, NotConvergedError
 from massfingerprint.sealevel._equation import Solution, solve
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
@@ -28,6 +29,7 @@ _ACCOUNT = {
     "mass_residual": "relative mass left unbalanced",
     "converged": "1 where the tolerance was reached",
 }
+_OWN_DIMENSIONS = {"part", "coefficient", "site"}
 _SMALLEST_TOLERANCE = 1e-14  # below, rounding keeps the residual from falling
 
 
@@ -38,19 +40,21 @@ def _check_load(load: xr.DataArray) -> tuple[xr.DataArray, Grid, bool, float]:
     unit, scale = vocabulary.require(load.attrs, ("kg m-2", "kg m-2 Gt-1"), argument="load")
     grid = grid_of(load, argument="load")
     check_finite(load, argument="load")
+    taken = sorted(_OWN_DIMENSIONS & set(load.dims))
+    if taken:
+        raise InputError(f"load: the dimension name {taken[0]!r} is used by the answer. Rename it first.")
     return load.transpose(..., "lat", "lon"), grid, unit == "kg m-2 Gt-1", scale
 
 
 def _check_choices(outputs: tuple[str, ...], frame: str, tolerance: float, on_failure: str) -> tuple[str, ...]:
-    names = (outputs,) if isinstance(outputs, str) else tuple(outputs)
+    names = (outputs,) if isinstance(outputs, str) else tuple(outputs or ())
     for name in names:
-        if name not in FIELDS:
-            raise InputError(f"outputs: no field {name!r}. {nearest_names(str(name), FIELDS)}")
+        one_of(name, FIELDS, argument="outputs", kind="field")
     if not names:
         raise InputError(f"outputs: name at least one of {', '.join(FIELDS)}.")
     check_frame(frame)
-    if not _SMALLEST_TOLERANCE <= tolerance < 1.0:
-        raise InputError(f"tolerance: must lie between {_SMALLEST_TOLERANCE:g} and 1, got {tolerance!r}.")
+    between = f"a number from {_SMALLEST_TOLERANCE:g} to 1"
+    real_number(tolerance, argument="tolerance", allowed=between, low=_SMALLEST_TOLERANCE, high=1.0)
     if on_failure not in ("raise", "return"):
         raise InputError(f"on_failure: must be 'raise' or 'return', got {on_failure!r}.")
     return names
@@ -131,6 +135,8 @@ def solve_fingerprints(
     NotConvergedError
         If a solve misses its tolerance and ``on_failure`` is ``"raise"``.
     """
+    if not isinstance(prepared, Prepared):
+        raise InputError(f"prepared: must come from prepare_solver, got {type(prepared).__name__}.")
     names = _check_choices(outputs, reference_frame, tolerance, on_failure)
     load, grid, per_gigatonne, scale = _check_load(load)
     lead = load.dims[:-2]

@@ -5,13 +5,14 @@ from dataclasses import dataclass, field
 import numpy as np
 import xarray as xr
 
+from massfingerprint.arguments import real_number, whole_number
 from massfingerprint.constants import KILOGRAMS_PER_GIGATONNE
 from massfingerprint.earth.response import coefficient_factors
 from massfingerprint.errors import GridError, InputError
 from massfingerprint.sealevel._equation import Operator
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import Grid, grid_of
-from massfingerprint.sphere.harmonics import check_degree, check_finite
+from massfingerprint.sphere.harmonics import check_finite
 
 _FRACTION_TOLERANCE = 1e-6  # room for float32 storage of 0 and 1
 
@@ -71,8 +72,8 @@ def _check_ocean(ocean: xr.DataArray) -> Grid:
         raise GridError(
             f"ocean: fractions must lie between 0 and 1, got {low:g} to {high:g}. Divide percentages by 100."
         )
-    if high <= 0.0:
-        raise GridError("ocean: there is no water anywhere (all fractions are 0). Pass 1 where there is sea.")
+    if high <= _FRACTION_TOLERANCE:
+        raise GridError("ocean: there is no water anywhere (no fraction above 0). Pass 1 where there is sea.")
     return grid
 
 
@@ -81,15 +82,17 @@ def _check_love(love: xr.Dataset, max_degree: int) -> xr.Dataset:
     missing = sorted(wanted - set(love.data_vars)) if isinstance(love, xr.Dataset) else sorted(wanted)
     if missing:
         raise InputError(f"love: lacks {', '.join(missing)}. Use love_numbers('prem', max_degree={max_degree}).")
-    lost = [name for name in ("radius", "mean_density", "surface_gravity") if name not in love.attrs]
-    if lost:
-        raise InputError(f"love: lacks the attributes {', '.join(lost)}. Keep attrs when changing the table.")
+    for name in ("radius", "mean_density", "surface_gravity"):
+        if not np.isfinite(love.attrs.get(name, np.nan)) or love.attrs[name] <= 0.0:
+            found = love.attrs.get(name, "none")
+            raise InputError(
+                f"love: attribute {name} must be a positive number, got {found}. Keep attrs when changing the table."
+            )
     needed = max(max_degree, 2)
     degree = love["degree"].values
-    if degree.size <= needed or not np.array_equal(degree[: needed + 1], np.arange(needed + 1)):
-        raise InputError(
-            f"love: degrees 0 to {needed} are needed, got {degree[0]} to {degree[-1]}. Ask for max_degree={needed}."
-        )
+    if not np.array_equal(degree[: needed + 1], np.arange(needed + 1)):
+        found = f"{degree[0]} to {degree[-1]}" if degree.size else "none"
+        raise InputError(f"love: degrees 0 to {needed} are needed, got {found}. Ask for max_degree={needed}.")
     table = love.isel(degree=slice(0, needed + 1))
     for name in sorted(wanted):
         if not np.isfinite(table[name].values).all():
@@ -128,17 +131,15 @@ def prepare_solver(
         If the degree, the density or the Love numbers cannot be used.
     """
     grid = _check_ocean(ocean)
-    max_degree = check_degree(max_degree, lowest=1)
-    if not (np.isfinite(water_density) and water_density > 0.0):
-        raise InputError(f"water_density: must be a positive number of kg m-3, got {water_density!r}.")
+    max_degree = whole_number(max_degree, argument="max_degree", lowest=1)
+    tiny = float(np.finfo(np.float64).tiny)
+    density = real_number(water_density, argument="water_density", allowed="a positive number of kg m-3", low=tiny)
     table = _check_love(love, max_degree)
     ocean_degree = min(grid.band_limit, 2 * max_degree)  # higher degrees cannot reach the solution
     fraction = _transform.analyse(grid.to_rings(ocean.transpose("lat", "lon").values), ocean_degree, grid.first_azimuth)
     rings = _transform.GaussLegendreRings(max_degree, ocean_degree)
     degree, order = _transform.degrees_and_orders(max_degree)
     response = coefficient_factors(table, "relative_sea_level", degree, order, rotation=rotation)
-    operator = Operator(
-        rings, rings.synthesise(fraction), _transform.resized(fraction, max_degree), response, float(water_density)
-    )
+    operator = Operator(rings, rings.synthesise(fraction), _transform.resized(fraction, max_degree), response, density)
     area = float(fraction[0].real * np.sqrt(4.0 * np.pi)) * float(love.attrs["radius"]) ** 2
-    return Prepared(grid, table, max_degree, bool(rotation), float(water_density), area, operator)
+    return Prepared(grid, table, max_degree, bool(rotation), density, area, operator)

@@ -127,9 +127,10 @@ def regular_grid(spacing: float) -> Grid:
     GridError
         If the spacing is not positive or does not divide 180.
     """
-    rings = 180.0 / spacing if spacing > 0 else 0.0
-    count = round(rings)
-    if count < 1 or not np.isfinite(rings) or abs(rings - count) > 1e-9 * count:
+    number = isinstance(spacing, int | float | np.integer | np.floating) and not isinstance(spacing, bool)
+    rings = 180.0 / spacing if number and 0.0 < spacing <= 180.0 else 0.0
+    count = round(rings) if np.isfinite(rings) else 0
+    if count < 1 or abs(rings - count) > 1e-9 * count:
         raise GridError(
             f"spacing: must be a positive number of degrees that divides 180, got {spacing!r}. Try 0.25, 0.5 or 1."
         )
@@ -165,6 +166,9 @@ def grid_of(field: xr.DataArray, *, argument: str | None = None) -> Grid:
             raise GridError(
                 f"{name}: needs a dimension coordinate '{axis}' in degrees, got dimensions {tuple(field.dims)}."
             )
+    for axis in ("lat", "lon"):
+        if field[axis].dtype.kind not in "fiu":
+            raise GridError(f"{name}: {axis} must hold degrees as numbers, got {field[axis].dtype}.")
     latitudes = np.asarray(field["lat"].values, dtype=np.float64)
     longitudes = np.asarray(field["lon"].values, dtype=np.float64)
     _check_latitudes(latitudes, name)
@@ -174,9 +178,9 @@ def grid_of(field: xr.DataArray, *, argument: str | None = None) -> Grid:
 
 def _check_latitudes(latitudes: Array, name: str) -> None:
     count = latitudes.size
-    expected = -90.0 + 180.0 / count * (np.arange(count) + 0.5)
-    if count < 2 or np.isnan(latitudes).any():
+    if count < 2 or not np.isfinite(latitudes).all():
         raise GridError(f"{name}: lat needs at least 2 finite values, got {latitudes.tolist()[:4]}.")
+    expected = -90.0 + 180.0 / count * (np.arange(count) + 0.5)
     ordered = latitudes if latitudes[0] < latitudes[-1] else latitudes[::-1]
     if np.abs(ordered - expected).max() > _PLACE_TOLERANCE * 180.0 / count:
         raise GridError(
@@ -187,7 +191,7 @@ def _check_latitudes(latitudes: Array, name: str) -> None:
 
 def _check_longitudes(longitudes: Array, name: str) -> None:
     count = longitudes.size
-    if count < 4 or np.isnan(longitudes).any():
+    if count < 4 or not np.isfinite(longitudes).all():
         raise GridError(f"{name}: lon needs at least 4 finite values, got {longitudes.tolist()[:4]}.")
     steps = (np.diff(longitudes) + 180.0) % 360.0 - 180.0
     sign = 1.0 if steps[0] > 0 else -1.0

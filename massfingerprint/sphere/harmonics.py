@@ -12,6 +12,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from massfingerprint.arguments import whole_number
 from massfingerprint.errors import GridError, InputError
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import Grid, grid_of
@@ -20,15 +21,10 @@ if TYPE_CHECKING:
     from pyshtools import SHCoeffs
 
 
-def check_degree(max_degree: Any, *, argument: str = "max_degree", lowest: int = 0) -> int:
-    """Return a whole-number degree, or raise InputError naming the argument."""
-    if isinstance(max_degree, bool) or not isinstance(max_degree, (int, np.integer)) or max_degree < lowest:
-        raise InputError(f"{argument}: must be a whole number of {lowest} or more, got {max_degree!r}.")
-    return int(max_degree)
-
-
 def check_finite(field: xr.DataArray, *, argument: str) -> None:
-    """Raise GridError naming the first place where a field (..., lat, lon) is NaN or infinite."""
+    """Raise GridError if a field (..., lat, lon) does not hold real numbers, or where the first one is NaN or infinite."""
+    if field.dtype.kind not in "fiub":
+        raise GridError(f"{argument}: must hold real numbers, got {field.dtype}. Convert it first.")
     bad = ~np.isfinite(field.values)
     if not bad.any():
         return
@@ -96,7 +92,7 @@ def analyse(field: xr.DataArray, *, max_degree: int | None = None) -> xr.DataArr
     """
     grid = grid_of(field)
     name = str(field.name or "field")
-    limit = grid.band_limit if max_degree is None else check_degree(max_degree)
+    limit = grid.band_limit if max_degree is None else whole_number(max_degree, argument="max_degree", lowest=0)
     if limit > grid.band_limit:
         raise GridError(
             f"max_degree: a grid of {grid.nlat} x {grid.nlon} cells determines at most {grid.band_limit}, got {limit}."

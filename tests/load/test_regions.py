@@ -8,7 +8,7 @@ from shapely.geometry import Point, box
 
 from massfingerprint.bundled import open_bundled
 from massfingerprint.coverage import sphere_area
-from massfingerprint.errors import RegionError
+from massfingerprint.errors import InputError, RegionError
 from massfingerprint.load.regions import disc, regions
 
 SPHERE = 6371.0**2  # km2 per steradian
@@ -148,22 +148,22 @@ def test_disc_longitude_convention_does_not_matter():
 @pytest.mark.parametrize(
     ("arguments", "words"),
     [
-        (("d", 91, 0, 10), "lat must be a number from -90 to 90, got 91"),
-        (("d", np.nan, 0, 10), "lat must be"),
-        (("d", 0, np.inf, 10), "lon must be"),
+        (("d", 91, 0, 10), "lat: must be a number from -90 to 90, got 91"),
+        (("d", np.nan, 0, 10), "lat: must be"),
+        (("d", 0, np.inf, 10), "lon: must be"),
         (("d", 0, 0, 0), "radius_km must be more than 0"),
-        (("d", 0, 0, -3), "radius_km must be"),
-        (("d", 0, 0, 10001), "radius_km must be a number from 0 to 10000"),
-        (("d", 0, 0, "10"), "radius_km must be"),
+        (("d", 0, 0, -3), "radius_km: must be"),
+        (("d", 0, 0, 10001), "radius_km: must be a number from 0 to 10000"),
+        (("d", 0, 0, "10"), "radius_km: must be"),
         (("", 0, 0, 10), "name must be text"),
     ],
 )
 def test_impossible_disc_is_refused(arguments, words):
-    with pytest.raises(RegionError, match=words):
+    with pytest.raises(InputError, match=words):
         disc(*arguments)
 
 
 @pytest.mark.parametrize("vertices", [3, 36.0, True])
 def test_impossible_number_of_corners_is_refused(vertices):
-    with pytest.raises(RegionError, match="vertices must be"):
+    with pytest.raises(InputError, match="vertices: must be"):
         disc("d", 0, 0, 10, vertices=vertices)
