@@ -139,6 +139,20 @@ def synthesise_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> A
     return values.reshape((*lead, count))
 
 
+def point_coefficients(colatitude: float, azimuth: float, max_degree: int) -> Complex:
+    """Coefficients (n,) of a unit mass at a point (radians) on the unit sphere: the adjoint of evaluating there."""
+    return ducc0.sht.adjoint_synthesis(
+        map=np.ones((1, 1)),
+        theta=np.array([colatitude]),
+        phi0=np.array([azimuth]),
+        nphi=np.ones(1, dtype=np.uint64),
+        ringstart=np.zeros(1, dtype=np.uint64),
+        spin=0,
+        lmax=max_degree,
+        nthreads=1,
+    )[0]
+
+
 @dataclass(frozen=True)
 class GaussLegendreRings:
     """Rings on which synthesis and analysis up to ``max_degree`` are adjoint under the quadrature weights.
