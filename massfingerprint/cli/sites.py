@@ -20,8 +20,10 @@ from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
 from massfingerprint.sealevel.sites import RESOLVED_BEYOND, at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
+from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.points import read_sites
 
+_RANGE_DEGREE = 256  # of the range within each source, which is smoothed anyway
 _CAUTION = "For screening only: local datums, surveys and licensed practice decide."
 _LEFT_OUT = (
     "Not included: ocean dynamics, thermal expansion and salinity, atmosphere, glacial isostatic adjustment, local land motion, "
@@ -31,11 +33,12 @@ _LEFT_OUT = (
 
 @dataclass(frozen=True)
 class Answer:
-    """Rates at sites: the table of mass rates, the prepared problem and patterns at sites in mm per Gt."""
+    """Rates at sites: table of mass rates, prepared problem, patterns at sites and their range within each source, mm per Gt."""
 
     rates: pd.DataFrame
     prepared: Prepared
     patterns: xr.Dataset
+    elsewhere: xr.Dataset
 
     def by_source(self, name: str) -> np.ndarray:
         """Rate (source, site) in mm yr-1 of one field."""
@@ -46,6 +49,12 @@ class Answer:
         return np.sqrt(
             ((self.patterns[name].values * self.rates["mass_rate_sigma"].to_numpy()[:, None]) ** 2).sum(axis=0)
         )
+
+    def range_by_source(self) -> tuple[np.ndarray, np.ndarray]:
+        """Lowest and highest rate (source, site) in mm yr-1 if each source's mass sat in one cell of it."""
+        scale = self.rates["mass_rate"].to_numpy()[:, None]
+        ends = [self.elsewhere[f"relative_sea_level_{end}"].values * scale for end in ("lowest", "highest")]
+        return np.minimum(*ends), np.maximum(*ends)
 
     @property
     def global_mean(self) -> tuple[float, float]:
@@ -61,7 +70,10 @@ def _answer(rates_file: Path, sites_file: Path, max_degree: int, spacing: float)
     prepared = prepare_solver(ocean, love_numbers(max_degree=max(max_degree, 2)), max_degree=max_degree)
     load = spread_mass(outlines, ocean)
     patterns = solve_fingerprints(prepared, load, outputs=("relative_sea_level", "bedrock_up"))
-    return Answer(rates, prepared, at_sites(patterns, sites))
+    coarse = prepared
+    if max_degree > _RANGE_DEGREE:
+        coarse = prepare_solver(ocean, love_numbers(max_degree=_RANGE_DEGREE), max_degree=_RANGE_DEGREE)
+    return Answer(rates, prepared, at_sites(patterns, sites), range_within(coarse, load, sites))
 
 
 def _table(answer: Answer) -> pd.DataFrame:
@@ -79,6 +91,10 @@ def _table(answer: Answer) -> pd.DataFrame:
     out["vertical land motion, elastic [mm yr-1]"] = answer.by_source("bedrock_up").sum(axis=0)
     out["truncation [mm yr-1]"] = answer.by_source("relative_sea_level_truncation").sum(axis=0)
     out["total tapered [mm yr-1]"] = answer.by_source("relative_sea_level_tapered").sum(axis=0)
+    lowest, highest = answer.range_by_source()
+    for source, low, high in zip(answer.rates["source"], lowest, highest, strict=True):
+        out[f"{source} lowest [mm yr-1]"], out[f"{source} highest [mm yr-1]"] = low, high
+    out["total lowest [mm yr-1]"], out["total highest [mm yr-1]"] = lowest.sum(axis=0), highest.sum(axis=0)
     out["not resolved"] = _unresolved(answer)
     return out
 
@@ -112,18 +128,20 @@ def _split(source: str) -> tuple[str, str]:
 
 def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
     sources = list(answer.rates["source"])
-    width = max(12, *(len(word) + 2 for source in sources for word in _split(source)))
-    heads = [[_split(source)[line] for source in sources] for line in (0, 1)]
-    lines = [
-        f"{'Relative sea level,':26}{''.join(f'{word:>{width}}' for word in heads[0])}{'':18}{'ratio':>8}{'land':>9}{'trun-':>8}",
-        f"{'mm/yr':26}{''.join(f'{word:>{width}}' for word in heads[1])}{'total':>9}{'':9}{'to mean':>8}{'up':>9}{'cation':>8}",
-    ]
+    width = max(11, *(len(word) + 1 for source in sources for word in _split(source)))
+    tail = (("", "ratio", "land", "trun-", "if else", "where"), ("total", "to mean", "up", "cation", "lowest", "highest"))
+    lines = []
+    for line, title in enumerate(("Relative sea level,", "mm/yr")):
+        total, *others = tail[line]
+        heads = "".join(f"{_split(source)[line]:>{width}}" for source in sources)
+        lines.append(f"{title:22}{heads}{total:>9}{'':9}{''.join(f'{word:>8}' for word in others)}")
     for _, row in table.iterrows():
         parts = "".join(f"{row[f'{source} [mm yr-1]']:+{width}.3f}" for source in sources)
         lines.append(
-            f"{row['site'][:25]:26}{parts}{row['total [mm yr-1]']:+9.3f} +- {row['total sigma [mm yr-1]']:5.3f}"
-            f"{row['ratio to global mean [1]']:8.2f}{row['vertical land motion, elastic [mm yr-1]']:+9.3f}"
-            f"{row['truncation [mm yr-1]']:+8.3f}{'  not resolved: ' + row['not resolved'] if row['not resolved'] else ''}"
+            f"{row['site'][:21]:22}{parts}{row['total [mm yr-1]']:+9.3f} +- {row['total sigma [mm yr-1]']:5.3f}"
+            f"{row['ratio to global mean [1]']:8.2f}{row['vertical land motion, elastic [mm yr-1]']:+8.3f}"
+            f"{row['truncation [mm yr-1]']:+8.3f}{row['total lowest [mm yr-1]']:+8.2f}{row['total highest [mm yr-1]']:+8.2f}"
+            f"{'  not resolved: ' + row['not resolved'] if row['not resolved'] else ''}"
         )
     return lines
 
@@ -132,7 +150,8 @@ def _notes(answer: Answer) -> list[str]:
     degree = answer.prepared.max_degree
     text = (
         "+-: 1 standard uncertainty (1 sigma) of the mass rates, taken as independent between sources; Love numbers add about 1 %; "
-        "where within a source the mass was lost is not in the table, it is spread evenly over its ice. ratio to mean: total "
+        "where within a source the mass was lost is not in the table, it is spread evenly over its ice; if elsewhere: lowest and "
+        "highest total if each source's mass sat in one cell of it. ratio to mean: total "
         "over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
         f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
         f"not resolved: within {RESOLVED_BEYOND:g} km of the ice named, where higher degrees would change the value."
