@@ -129,12 +129,13 @@ def _split(source: str) -> tuple[str, str]:
 def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
     sources = list(answer.rates["source"])
     width = max(11, *(len(word) + 1 for source in sources for word in _split(source)))
-    tail = (("", "ratio", "land", "trun-", "if else", "where"), ("total", "to mean", "up", "cation", "lowest", "highest"))
+    tail = (("", "ratio", "land", "trun-"), ("total", "to mean", "up", "cation", "lowest", "highest"))
     lines = []
     for line, title in enumerate(("Relative sea level,", "mm/yr")):
         total, *others = tail[line]
         heads = "".join(f"{_split(source)[line]:>{width}}" for source in sources)
         lines.append(f"{title:22}{heads}{total:>9}{'':9}{''.join(f'{word:>8}' for word in others)}")
+    lines[0] += f"{'if elsewhere':>16}"
     for _, row in table.iterrows():
         parts = "".join(f"{row[f'{source} [mm yr-1]']:+{width}.3f}" for source in sources)
         lines.append(
