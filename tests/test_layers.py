@@ -26,7 +26,7 @@ FLOORS = {
     "coast": 6,
     "ensemble": 7,
     "study": 8,
-    "figures": 2,
+    "figures": 3,
     "report": 9,
     "web": 9,
     "cli": 10,

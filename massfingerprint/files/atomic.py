@@ -38,3 +38,9 @@ def write_text(text: str, path: str | os.PathLike[str]) -> None:
     """Write UTF-8 text, whole or not at all."""
     with replacing(path) as temporary:
         temporary.write_text(text, encoding="utf-8")
+
+
+def write_binary(content: bytes, path: str | os.PathLike[str]) -> None:
+    """Write bytes, whole or not at all."""
+    with replacing(path) as temporary:
+        temporary.write_bytes(content)

@@ -87,7 +87,7 @@ def region_table(
     *,
     notes: list[str],
     parents: list[str] | None = None,
-    approximate: bool = False,
+    approximate: bool | list[bool] = False,
 ) -> gpd.GeoDataFrame:
     """Lay out a table of regions with the agreed columns.
 
@@ -101,14 +101,14 @@ def region_table(
         Where each outline came from.
     parents : list of str, optional
         The region each is a part of; empty where there is none (the default).
-    approximate : bool
-        Whether the outlines are drawn by hand.
+    approximate : bool or list of bool
+        Whether the outlines are approximate, one for all or one each.
     """
     data = {
         "source": pd.Series(names, dtype=object),
         "geometry": geometries,
         "parent": pd.Series([""] * len(names) if parents is None else parents, dtype=object),
-        "approximate": np.full(len(names), approximate),
+        "approximate": np.broadcast_to(np.asarray(approximate, dtype=bool), len(names)).copy(),
         "source_note": pd.Series(notes, dtype=object),
     }
     return gpd.GeoDataFrame(data, geometry="geometry", crs="EPSG:4326")[list(COLUMNS)]

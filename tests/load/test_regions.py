@@ -114,13 +114,6 @@ def test_greenland_is_whole_outlines():
     assert sphere_area(geometry("greenland")) == pytest.approx(sum(sphere_area(s) for s in touched), rel=1e-12)
 
 
-def test_divides_end_in_the_open_sea():
-    land = open_bundled("land_50m.geojson.gz").geometry
-    for line in open_bundled("antarctic_divides.geojson").geometry:
-        for end in (line.coords[0], line.coords[-1]):
-            assert not land.intersects(Point(end)).any()
-
-
 def test_unknown_and_repeated_names_are_refused():
     with pytest.raises(RegionError, match=r"'grenland'\. Did you mean greenland"):
         regions("grenland")

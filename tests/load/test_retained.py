@@ -72,5 +72,5 @@ def test_wrong_arguments(spread):
         retain_on_land(load, ocean, ocean_reaching_fraction={"alps": 0.5}, places=lake)
     with pytest.raises(InputError, match=r"no source 'alpes' in the load\. Did you mean alps"):
         retain_on_land(load, ocean, ocean_reaching_fraction={"alpes": 0.5}, places=lake)
-    with pytest.raises(InputError, match="of 'alps' must lie between 0 and 1, got -0.5"):
+    with pytest.raises(InputError, match=r"of 'alps' must lie between 0 and 1, got -0\.5"):
         retain_on_land(load, ocean, ocean_reaching_fraction={"alps": -0.5}, places=lake)
