@@ -85,7 +85,7 @@ def _refuse_unconverged(solution: Solution, place: dict[str, Any], tolerance: fl
     where = ", ".join(f"{dim} {value}" for dim, value in place.items())
     raise NotConvergedError(
         f"load{f' at {where}' if where else ''}: residual {solution.residual:.3g} after {solution.rounds} rounds, "
-        f"tolerance {tolerance:g}. Loosen tolerance, check water_density and the Love numbers, or pass on_failure='return'."
+        f"tolerance {tolerance:g}. Check water_density and the Love numbers if it grows, loosen tolerance if it falls slowly."
     )
 
 
@@ -156,7 +156,7 @@ def solve_fingerprints(
     out["load_extent"] = (
         (*lead, "lat", "lon"),
         (load.values != 0.0).astype(np.int8),
-        {"long_name": "1 in cells that carry load"},
+        {"long_name": "1 in cells that carry load", "units": "1"},
     )
     return out.assign_attrs(_attributes(prepared, reference_frame, band))
 

@@ -6,7 +6,7 @@ import numpy as np
 import xarray as xr
 
 from massfingerprint.arguments import real_number, whole_number
-from massfingerprint.constants import KILOGRAMS_PER_GIGATONNE
+from massfingerprint.constants import FRESH_WATER_DENSITY, KILOGRAMS_PER_GIGATONNE
 from massfingerprint.earth.response import coefficient_factors
 from massfingerprint.errors import GridError, InputError
 from massfingerprint.sealevel._equation import Operator
@@ -17,7 +17,7 @@ from massfingerprint.sphere.harmonics import check_finite
 _FRACTION_TOLERANCE = 1e-6  # room for float32 storage of 0 and 1
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Prepared:
     """A sea-level problem ready for loads; nothing in it changes.
 
@@ -49,8 +49,8 @@ class Prepared:
 
     @property
     def gigatonnes_per_millimetre(self) -> float:
-        """Mass that raises this ocean by 1 mm on average, Gt mm-1."""
-        return self.ocean_area * self.water_density * 1e-3 / KILOGRAMS_PER_GIGATONNE.value
+        """Mass of fresh water (1000 kg m-3 by convention) that raises this ocean by 1 mm on average, Gt mm-1."""
+        return self.ocean_area * FRESH_WATER_DENSITY.value * 1e-3 / KILOGRAMS_PER_GIGATONNE.value
 
     @property
     def barystatic_per_gigatonne(self) -> float:
@@ -112,7 +112,7 @@ def prepare_solver(
     love : Dataset (degree)
         Love numbers at least to ``max_degree``, any frame.
     max_degree : int
-        Degree of the solution, 1 or more; it may exceed the band limit of the ocean's grid.
+        Degree of the solution, 2 or more (1 without rotation); it may exceed the band limit of the ocean's grid.
     rotation : bool
         Let the load shift the rotation axis, and the shifted axis move the sea.
     water_density : float
@@ -131,7 +131,10 @@ def prepare_solver(
         If the degree, the density or the Love numbers cannot be used.
     """
     grid = _check_ocean(ocean)
-    max_degree = whole_number(max_degree, argument="max_degree", lowest=1)
+    if not isinstance(rotation, bool | np.bool_):
+        raise InputError(f"rotation: must be True or False, got {rotation!r}.")
+    # the pole is moved by the load's degree 2
+    max_degree = whole_number(max_degree, argument="max_degree", lowest=2 if rotation else 1)
     tiny = float(np.finfo(np.float64).tiny)
     density = real_number(water_density, argument="water_density", allowed="a positive number of kg m-3", low=tiny)
     table = _check_love(love, max_degree)

@@ -148,3 +148,22 @@ def test_odd_input_meets_a_message_of_ours(case, love):
     """No traceback from deep inside, no warning of a library, no number."""
     with pytest.raises(MassFingerprintError, match=r"^[a-z_]+: .+"):
         ODD[case](love)
+
+
+@pytest.mark.parametrize("rotation", ["off", None, 1])
+def test_rotation_is_true_or_false(rotation, love):
+    with pytest.raises(InputError, match="rotation: must be True or False, got"):
+        prepare_solver(WATER, love, max_degree=4, rotation=rotation)
+
+
+def test_rotation_needs_degree_two(love):
+    with pytest.raises(InputError, match="max_degree: must be a whole number of 2 or more, got 1"):
+        prepare_solver(WATER, love, max_degree=1)
+    assert prepare_solver(WATER, love, max_degree=1, rotation=False).max_degree == 1
+
+
+def test_barystatic_is_fresh_water_whatever_moves(love):
+    """4 pi a^2 of 1000 kg m-3 and 1 mm: 510.06 Gt on an all-water globe, also when salt water is moved."""
+    prepared = prepare_solver(WATER, love, max_degree=4, water_density=1025.0)
+    assert prepared.gigatonnes_per_millimetre == pytest.approx(4 * np.pi * 6.371e6**2 * 1e-12, rel=1e-12)
+    assert prepared.barystatic_per_gigatonne == pytest.approx(-1.0 / 510.06, rel=1e-4)
