@@ -2,6 +2,7 @@
 
 import gzip
 import hashlib
+import io
 import json
 import tomllib
 import zlib
@@ -15,8 +16,9 @@ from massfingerprint.errors import DamagedFileError, InputError, MissingFileErro
 
 if TYPE_CHECKING:
     from geopandas import GeoDataFrame
+    from pandas import DataFrame
 
-__all__ = ["bundled_sources", "open_bundled"]
+__all__ = ["bundled_sources", "open_bundled", "open_bundled_table"]
 
 _SOURCES = "source.toml"
 _REQUIRED = ("source", "licence", "sha256")
@@ -72,21 +74,54 @@ def open_bundled(name: str) -> "xr.Dataset | GeoDataFrame":
     MissingFileError, DamagedFileError
         The installed copy is gone or is not what was shipped.
     """
+    content = _checked(name, _OPENED)
+    try:
+        return _dataset(name) if name.endswith(".nc") else _polygons(name, content)
+    except (OSError, EOFError, zlib.error, ValueError, KeyError, TypeError) as error:
+        raise DamagedFileError(f"bundled file '{name}' cannot be read: {error}. {_REMEDY}") from error
+
+
+def open_bundled_table(name: str) -> "DataFrame":
+    """Open one table that comes with the package as text cells, after checking its sha256.
+
+    Parameters
+    ----------
+    name : str
+        A key of `bundled_sources` that ends in ``.csv``.
+
+    Returns
+    -------
+    pandas.DataFrame
+        Cells as strings, columns named as in the header, units and all.
+
+    Raises
+    ------
+    InputError, MissingFileError, DamagedFileError
+        As `open_bundled`.
+    """
+    from pandas import read_csv  # noqa: PLC0415  half a second that readers of grids need not wait
+
+    content = _checked(name, (".csv",))
+    try:
+        return read_csv(io.BytesIO(content), dtype=str, keep_default_na=False)
+    except ValueError as error:
+        raise DamagedFileError(f"bundled file '{name}' cannot be read: {error}. {_REMEDY}") from error
+
+
+def _checked(name: str, endings: tuple[str, ...]) -> bytes:
+    """Content of a bundled file of the right kind whose sha256 is the recorded one."""
     sources = bundled_sources()
     if not isinstance(name, str) or name not in sources:
         raise InputError(f"name: no bundled file is called {name!r}. {nearest_names(str(name), list(sources))}")
-    if not name.endswith(_OPENED):
-        raise InputError(f"name: {name!r} ends in none of {', '.join(_OPENED)}. Its own module reads it.")
+    if not name.endswith(endings):
+        raise InputError(f"name: {name!r} ends in none of {', '.join(endings)}. Its own function or module reads it.")
     content = _read(name)
     found, expected = hashlib.sha256(content).hexdigest(), sources[name]["sha256"]
     if found != expected:
         raise DamagedFileError(
             f"bundled file '{name}' is damaged: sha256 {found[:12]}... instead of {str(expected)[:12]}.... {_REMEDY}"
         )
-    try:
-        return _dataset(name) if name.endswith(".nc") else _polygons(name, content)
-    except (OSError, EOFError, zlib.error, ValueError, KeyError, TypeError) as error:
-        raise DamagedFileError(f"bundled file '{name}' cannot be read: {error}. {_REMEDY}") from error
+    return content
 
 
 def _folder() -> Traversable:

@@ -1,5 +1,6 @@
 """The command line: one file per command, loaded when it is called. Data on stdout, talk on stderr."""
 
+import signal
 import sys
 from collections.abc import Sequence
 from importlib import import_module
@@ -11,6 +12,7 @@ from massfingerprint.errors import MassFingerprintError
 
 _COMMANDS = {
     "earth": "Love numbers of the built-in Earth.",
+    "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
     "sites": "Sea level at named coasts from published mass rates.",
 }
 
@@ -61,4 +63,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def entry() -> None:
     """Console entry point."""
+    if hasattr(signal, "SIGPIPE"):
+        # the reader of a pipe, such as head, may stop early: end quietly, as other commands do
+        signal.signal(signal.SIGPIPE, signal.SIG_DFL)
     sys.exit(main())

@@ -67,7 +67,7 @@ def _answer(rates_file: Path, sites_file: Path, max_degree: int, spacing: float)
     rates, sites = read_rates(rates_file), read_sites(sites_file)
     outlines = regions(*rates["source"])
     ocean = ocean_fraction(spacing)
-    prepared = prepare_solver(ocean, love_numbers(max_degree=max(max_degree, 2)), max_degree=max_degree)
+    prepared = prepare_solver(ocean, love_numbers(max_degree=max_degree), max_degree=max_degree)
     load = spread_mass(outlines, ocean)
     patterns = solve_fingerprints(prepared, load, outputs=("relative_sea_level", "bedrock_up"))
     coarse = prepared
@@ -179,7 +179,7 @@ def _notes(answer: Answer) -> list[str]:
     "--max-degree",
     default=512,
     show_default=True,
-    type=click.IntRange(1, 4096),
+    type=click.IntRange(2, 4096),
     help="Spherical-harmonic degree of the solution.",
 )
 @click.option(
@@ -198,9 +198,9 @@ def command(rates_file: Path, sites_file: Path, max_degree: int, spacing: float,
     """
     answer = _answer(rates_file, sites_file, max_degree, spacing)
     table = _table(answer)
-    click.echo("\n".join([*_headline(answer), "", *_grid_of_words(answer, table), "", *_notes(answer)]))
-    for line in sorted(set(answer.rates["citation"])):
-        click.echo(f"Mass rates: {line}.", err=True)
     if csv_file is not None:
         write_text(table.to_csv(index=False, lineterminator="\n"), csv_file)
         click.echo(f"Table written to {csv_file}.", err=True)
+    click.echo("\n".join([*_headline(answer), "", *_grid_of_words(answer, table), "", *_notes(answer)]))
+    for line in sorted(set(answer.rates["citation"])):
+        click.echo(f"Mass rates: {line}.", err=True)

@@ -1,9 +1,11 @@
 """Datasets to NetCDF, whole or not at all."""
 
 import os
+from pathlib import Path
 
 import xarray as xr
 
+from massfingerprint.errors import DamagedFileError, MissingFileError
 from massfingerprint.files.atomic import replacing
 
 
@@ -27,3 +29,25 @@ def write_netcdf(dataset: xr.Dataset, path: str | os.PathLike[str]) -> None:
     }
     with replacing(path) as temporary:
         dataset.to_netcdf(temporary, engine="netcdf4", format="NETCDF4", encoding=encoding)
+
+
+def read_netcdf(path: str | os.PathLike[str]) -> xr.Dataset:
+    """Read a NetCDF file into memory.
+
+    Raises
+    ------
+    MissingFileError
+        If there is no such file.
+    DamagedFileError
+        If it is not NetCDF or cannot be read.
+    """
+    source = Path(path)
+    if not source.is_file():
+        raise MissingFileError(f"{source}: there is no such file. Check the path; it is taken from the current folder.")
+    try:
+        with xr.open_dataset(source, engine="netcdf4") as stored:
+            return stored.load()
+    except (OSError, ValueError) as error:
+        raise DamagedFileError(
+            f"{source}: cannot be read as NetCDF ({str(error).splitlines()[0]}). Write it again."
+        ) from error

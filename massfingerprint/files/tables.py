@@ -58,6 +58,8 @@ def read_table(path: str | os.PathLike[str], *, required: tuple[str, ...]) -> tu
 
 
 def _split_headers(frame: pd.DataFrame, source: Path) -> tuple[pd.DataFrame, dict[str, str]]:
+    if len(frame.columns) == 1 and any(mark in str(frame.columns[0]) for mark in ";\t|"):
+        raise TableError(f"{source}: the header {str(frame.columns[0])!r} has no commas. Use commas between columns.")
     names, units = [], {}
     for header in frame.columns:
         match = _HEADER.match(str(header).strip())
@@ -79,7 +81,7 @@ def _check_columns(frame: pd.DataFrame, required: tuple[str, ...], source: Path)
     if not missing:
         return
     found = [str(name) for name in frame.columns]
-    hint = "Use commas between columns." if len(found) == 1 and ";" in found[0] else nearest_names(missing[0], found)
+    hint = nearest_names(missing[0], found)
     raise TableError(
         f"{source}: lacks the column{'s' if len(missing) > 1 else ''} {', '.join(missing)}; found {', '.join(found)}. {hint}"
     )

@@ -15,7 +15,7 @@ from shapely.geometry import Point
 from shapely.geometry.polygon import orient
 
 from massfingerprint import bundled
-from massfingerprint.bundled import bundled_sources, open_bundled
+from massfingerprint.bundled import bundled_sources, open_bundled, open_bundled_table
 from massfingerprint.errors import DamagedFileError, InputError, MissingFileError
 
 FOLDER = Path(bundled.__file__).parent
@@ -122,27 +122,31 @@ def add_file(folder, name, content):
         stream.write(f'\n["{name}"]\nsource = "test"\nlicence = "test"\nsha256 = "{digest}"\n')
 
 
+def opener(name):
+    return open_bundled_table if name.endswith(".csv") else open_bundled
+
+
 @pytest.mark.parametrize("name", NAMES)
 def test_a_flipped_byte_names_the_file(copy, name):
     content = bytearray((copy / name).read_bytes())
     content[len(content) // 2] ^= 0xFF
     (copy / name).write_bytes(content)
     with pytest.raises(DamagedFileError, match=rf"'{name}' is damaged: sha256 .* reinstall massfingerprint"):
-        open_bundled(name)
+        opener(name)(name)
 
 
 @pytest.mark.parametrize("name", NAMES)
 def test_a_file_cut_short_names_the_file(copy, name):
     (copy / name).write_bytes((copy / name).read_bytes()[:-10])
     with pytest.raises(DamagedFileError, match=rf"'{name}' is damaged"):
-        open_bundled(name)
+        opener(name)(name)
 
 
 @pytest.mark.parametrize("name", NAMES)
 def test_a_missing_file_names_the_file(copy, name):
     (copy / name).unlink()
     with pytest.raises(MissingFileError, match=rf"'{name}' is missing from .* reinstall massfingerprint"):
-        open_bundled(name)
+        opener(name)(name)
 
 
 def test_a_folder_in_place_of_a_file(copy):
@@ -167,7 +171,7 @@ def test_a_folder_in_place_of_a_file(copy):
 def test_content_that_cannot_be_decoded_names_the_file(copy, name, content):
     add_file(copy, name, content)
     with pytest.raises(DamagedFileError, match=rf"'{name}' cannot be read: .* reinstall massfingerprint"):
-        open_bundled(name)
+        opener(name)(name)
 
 
 def test_a_missing_source_list(copy):
