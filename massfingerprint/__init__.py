@@ -11,45 +11,80 @@ if TYPE_CHECKING:
     from massfingerprint.earth.love import love_numbers
     from massfingerprint.files.netcdf import write_netcdf
     from massfingerprint.load.ocean import ocean_fraction
-    from massfingerprint.load.regions import disc, read_regions, regions
+    from massfingerprint.load.regions import disc, read_regions, region_names, regions
+    from massfingerprint.load.retained import retain_on_land
     from massfingerprint.load.spread import spread_mass
+    from massfingerprint.mass.barystatic import barystatic
+    from massfingerprint.mass.combine import align, rebase, sum_sources
+    from massfingerprint.mass.covariance import covariance
+    from massfingerprint.mass.ledger import read_ledger
+    from massfingerprint.mass.published import published_rates, published_sets
+    from massfingerprint.mass.rates import rates
+    from massfingerprint.mass.scope import check_scope
     from massfingerprint.options import set_options
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
+    from massfingerprint.sealevel.within import range_within
     from massfingerprint.sphere.points import read_sites
 
 __version__ = "0.1.0"
 
 _HOMES = {
+    "align": "mass.combine",
     "at_sites": "sealevel.sites",
+    "barystatic": "mass.barystatic",
+    "check_scope": "mass.scope",
+    "covariance": "mass.covariance",
     "disc": "load.regions",
     "in_frame": "earth.frames",
     "love_numbers": "earth.love",
     "ocean_fraction": "load.ocean",
     "prepare_solver": "sealevel.solver",
+    "published_rates": "mass.published",
+    "published_sets": "mass.published",
+    "range_within": "sealevel.within",
+    "rates": "mass.rates",
+    "read_ledger": "mass.ledger",
     "read_regions": "load.regions",
     "read_sites": "sphere.points",
+    "rebase": "mass.combine",
+    "region_names": "load.regions",
     "regions": "load.regions",
+    "retain_on_land": "load.retained",
     "set_options": "options",
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
+    "sum_sources": "mass.combine",
     "write_netcdf": "files.netcdf",
 }
 
 __all__ = [
+    "align",
     "at_sites",
+    "barystatic",
+    "check_scope",
+    "covariance",
     "disc",
     "in_frame",
     "love_numbers",
     "ocean_fraction",
     "prepare_solver",
+    "published_rates",
+    "published_sets",
+    "range_within",
+    "rates",
+    "read_ledger",
     "read_regions",
     "read_sites",
+    "rebase",
+    "region_names",
     "regions",
+    "retain_on_land",
     "set_options",
     "solve_fingerprints",
     "spread_mass",
+    "sum_sources",
     "write_netcdf",
 ]
 

@@ -1,5 +1,6 @@
 """``massfingerprint ledger``: what a mass record says, in gigatonnes and millimetres."""
 
+import textwrap
 from pathlib import Path
 from typing import Any
 
@@ -98,8 +99,36 @@ def _preview(ledger: xr.Dataset, path: str) -> str:
     return f"{path}: understood as cumulative mass change in Gt, negative = loss\n\n{table}\n\n{about}"
 
 
-def _published(set_name: str | None) -> pd.DataFrame:
-    return published_sets() if set_name is None else published_rates(set_name)
+def _published(set_name: str | None, style: str) -> str:
+    """The list of published sets, or one set with its sources below the table."""
+    table = published_sets() if set_name is None else published_rates(set_name)
+    if style == "json":
+        text = table.assign(**{name: table[name].astype(str) for name in table.columns if name.startswith("time_")})
+        return as_json(text, {"set": set_name, "glossary": _GLOSSARY, "caution": _CAUTION})
+    if set_name is None:
+        notes = (
+            "One set is used at a time, never the sum: sets overlap. massfingerprint ledger published SET shows one."
+        )
+        return f"{rendered(table.drop(columns='assumption'), style)}\n\n{notes}"
+    cells = pd.DataFrame(
+        {
+            "source": table["source"],
+            "from": table["time_start"].dt.strftime("%Y-%m-%d"),
+            "to": table["time_end"].dt.strftime("%Y-%m-%d"),
+            "rate [Gt/yr]": [f"{value:+.1f}" for value in table["mass_rate"]],
+            "1 sigma [Gt/yr]": [f"{value:.1f}" for value in table["mass_rate_sigma"]],
+            "interval as published": table["interval"],
+            "scope": table["scope"],
+        }
+    )
+    below = [f"Source: {c}, doi:{d}." for c, d in dict.fromkeys(zip(table["citation"], table["doi"], strict=True))]
+    below += [f"Not seen on the page, from memory: {words}." for words in dict.fromkeys(table["from_memory"]) if words]
+    below += [f"Assumed: {words}." for words in dict.fromkeys(table["assumption"]) if words]
+    return "\n".join([rendered(cells, style), "", *_wrapped(_GLOSSARY, *below, _CAUTION)])
+
+
+def _wrapped(*paragraphs: str) -> list[str]:
+    return [line for paragraph in paragraphs for line in textwrap.wrap(paragraph, 110)]
 
 
 @click.command(name="ledger")
@@ -127,6 +156,7 @@ def _published(set_name: str | None) -> pd.DataFrame:
     help="Gigatonnes per millimetre.",
 )
 @click.option("--error-model", default=None, help="independent, systematic or random_walk, if the file does not say.")
+@click.option("--seasonal", is_flag=True, help="Fit a yearly cycle beside the rate.")
 @click.option("--preview", is_flag=True, help="Only show what was understood of the file.")
 @click.option("--markdown", "style", flag_value="markdown", help="Print a Markdown table.")
 @click.option("--latex", "style", flag_value="latex", help="Print a LaTeX table.")
@@ -141,11 +171,7 @@ def command(file: str, published_set: str | None, **options: Any) -> None:
     """
     options["style"] = options["style"] or "plain"
     if file == "published":
-        table = _published(published_set)
-        style = options["style"]
-        click.echo(
-            as_json(table, {"set": published_set}) if style == "json" else rendered(table.fillna("").astype(str), style)
-        )
+        click.echo(_published(published_set, options["style"]))
         return
     if published_set is not None:
         raise InputError(
@@ -156,7 +182,11 @@ def command(file: str, published_set: str | None, **options: Any) -> None:
         click.echo(_preview(ledger, file))
         return
     table = summarise(
-        ledger, windows=_windows(options["windows"]), interval=options["interval"], gt_per_mm=options["gt_per_mm"]
+        ledger,
+        windows=_windows(options["windows"]),
+        interval=options["interval"],
+        gt_per_mm=options["gt_per_mm"],
+        seasonal=options["seasonal"],
     )
     _print(table, options)
     if options["csv_file"] is not None:
@@ -172,9 +202,10 @@ def _print(table: pd.DataFrame, options: dict[str, Any]) -> None:
         return
     cells, notes = _cells(table, factor)
     click.echo(rendered(cells, options["style"]))
-    click.echo(
-        "\n"
-        + "\n".join(
-            [f"+-: {interval}. {_GLOSSARY}", *notes, sentence(table, interval=interval, gt_per_mm=factor), _CAUTION]
-        )
+    paragraphs = (
+        f"+-: {interval}. {_GLOSSARY}",
+        *notes,
+        sentence(table, interval=interval, gt_per_mm=factor),
+        _CAUTION,
     )
+    click.echo("\n".join(["", *_wrapped(*paragraphs)]))

@@ -1,6 +1,5 @@
 """``massfingerprint sites``: millimetres per year at named coasts from a table of mass rates."""
 
-import math
 import textwrap
 from dataclasses import dataclass
 from pathlib import Path
@@ -12,17 +11,21 @@ import xarray as xr
 
 from massfingerprint.constants import GIGATONNES_PER_MILLIMETRE
 from massfingerprint.earth.love import love_numbers
+from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
 from massfingerprint.files.tables import read_rates
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.regions import regions
 from massfingerprint.load.spread import spread_mass
+from massfingerprint.mass.published import published_rates
+from massfingerprint.mass.scope import check_scope
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
 from massfingerprint.sealevel.sites import RESOLVED_BEYOND, at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.points import read_sites
 
+_MOST_COLUMNS = 5  # of mass sources on a printed row
 _RANGE_DEGREE = 256  # of the range within each source, which is smoothed anyway
 _CAUTION = "For screening only: local datums, surveys and licensed practice decide."
 _LEFT_OUT = (
@@ -45,10 +48,15 @@ class Answer:
         return self.patterns[name].values * self.rates["mass_rate"].to_numpy()[:, None]
 
     def sigma(self, name: str) -> np.ndarray:
-        """Standard uncertainty (site,) in mm yr-1 of the total, from the mass rates alone, taken as independent."""
-        return np.sqrt(
-            ((self.patterns[name].values * self.rates["mass_rate_sigma"].to_numpy()[:, None]) ** 2).sum(axis=0)
-        )
+        """Standard uncertainty (site,) in mm yr-1 of the total, from the mass rates alone."""
+        return self._spread(self.patterns[name].values)
+
+    def _spread(self, per_gt: np.ndarray) -> np.ndarray:
+        """Sigma (site,) of the sum over sources of rate times ``per_gt`` (source, site): shared within an error group."""
+        parts = per_gt * self.rates["mass_rate_sigma"].to_numpy()[:, None]
+        groups = self.rates["error_group"].to_numpy()
+        together = [parts[groups == group].sum(axis=0) for group in dict.fromkeys(groups)]
+        return np.sqrt((np.stack(together) ** 2).sum(axis=0))
 
     def range_by_source(self) -> tuple[np.ndarray, np.ndarray]:
         """Lowest and highest rate (source, site) in mm yr-1 if each source's mass sat in one cell of it."""
@@ -60,11 +68,26 @@ class Answer:
     def global_mean(self) -> tuple[float, float]:
         """Barystatic rate and its standard uncertainty, mm yr-1."""
         factor = self.prepared.gigatonnes_per_millimetre
-        return -self.rates["mass_rate"].sum() / factor, math.sqrt((self.rates["mass_rate_sigma"] ** 2).sum()) / factor
+        spread = self._spread(np.ones((len(self.rates), 1)))
+        return -float(self.rates["mass_rate"].sum()) / factor, float(spread[0]) / factor
 
 
-def _answer(rates_file: Path, sites_file: Path, max_degree: int, spacing: float) -> Answer:
-    rates, sites = read_rates(rates_file), read_sites(sites_file)
+def _rates(rates_file: Path | None, published_set: str | None) -> pd.DataFrame:
+    """Mass rates from a file or a published set, no ice counted twice."""
+    if (rates_file is None) == (published_set is None):
+        raise InputError(
+            "rates: give either --rates FILE or --published SET. massfingerprint ledger published lists the sets."
+        )
+    rates = read_rates(rates_file) if rates_file is not None else published_rates(str(published_set))
+    check_scope(
+        list(rates["source"]),
+        scopes={s: scope for s, scope in zip(rates["source"], rates["scope"], strict=True) if scope},
+    )
+    return rates
+
+
+def _answer(rates: pd.DataFrame, sites_file: Path, max_degree: int, spacing: float) -> Answer:
+    sites = read_sites(sites_file)
     outlines = regions(*rates["source"])
     ocean = ocean_fraction(spacing)
     prepared = prepare_solver(ocean, love_numbers(max_degree=max_degree), max_degree=max_degree)
@@ -126,8 +149,20 @@ def _split(source: str) -> tuple[str, str]:
     return (first, rest.replace("_", " ")) if rest else ("", first)
 
 
+def _columns(answer: Answer, table: pd.DataFrame) -> dict[str, pd.Series]:
+    """Rate per site of each source; of many sources the largest, and the others together."""
+    sources = answer.rates["source"]
+    largest = answer.rates["mass_rate"].abs().sort_values(ascending=False, kind="stable").index[:_MOST_COLUMNS]
+    shown = sources if len(sources) <= _MOST_COLUMNS + 1 else sources[sources.index.isin(largest)]
+    out = {str(name): table[f"{name} [mm yr-1]"] for name in shown}
+    if len(shown) < len(sources):
+        out["all_others"] = table["total [mm yr-1]"] - sum(out.values())
+    return out
+
+
 def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
-    sources = list(answer.rates["source"])
+    columns = _columns(answer, table)
+    sources = list(columns)
     width = max(11, *(len(word) + 1 for source in sources for word in _split(source)))
     tail = (("", "ratio", "land", "trun-"), ("total", "to mean", "up", "cation", "lowest", "highest"))
     lines = []
@@ -136,8 +171,8 @@ def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
         heads = "".join(f"{_split(source)[line]:>{width}}" for source in sources)
         lines.append(f"{title:22}{heads}{total:>9}{'':9}{''.join(f'{word:>8}' for word in others)}")
     lines[0] += f"{'if elsewhere':>16}"
-    for _, row in table.iterrows():
-        parts = "".join(f"{row[f'{source} [mm yr-1]']:+{width}.3f}" for source in sources)
+    for place, (_, row) in enumerate(table.iterrows()):
+        parts = "".join(f"{values.iloc[place]:+{width}.3f}" for values in columns.values())
         lines.append(
             f"{row['site'][:21]:22}{parts}{row['total [mm yr-1]']:+9.3f} +- {row['total sigma [mm yr-1]']:5.3f}"
             f"{row['ratio to global mean [1]']:8.2f}{row['vertical land motion, elastic [mm yr-1]']:+8.3f}"
@@ -150,10 +185,10 @@ def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
 def _notes(answer: Answer) -> list[str]:
     degree = answer.prepared.max_degree
     text = (
-        "+-: 1 standard uncertainty (1 sigma) of the mass rates, taken as independent between sources; Love numbers add about 1 %; "
-        "where within a source the mass was lost is not in the table, it is spread evenly over its ice; if elsewhere: lowest and "
-        "highest total if each source's mass sat in one cell of it. ratio to mean: total "
-        "over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
+        "+-: 1 standard uncertainty (1 sigma) of the mass rates, independent between sources unless one published error was "
+        "split over them; Love numbers add about 1 %. Where within a source the mass was lost is not in the table, it is spread "
+        "evenly over its ice; if elsewhere: lowest and highest total if each source's mass sat in one cell of it. ratio to mean: "
+        "total over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
         f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
         f"not resolved: within {RESOLVED_BEYOND:g} km of the ice named, where higher degrees would change the value."
     )
@@ -164,10 +199,10 @@ def _notes(answer: Answer) -> list[str]:
 @click.option(
     "--rates",
     "rates_file",
-    required=True,
     type=click.Path(path_type=Path),
     help="CSV of mass rates, Gt/yr, negative = loss.",
 )
+@click.option("--published", "published_set", help="Use this set of published rates instead, e.g. 'otosaka 2023'.")
 @click.option(
     "--sites",
     "sites_file",
@@ -191,12 +226,19 @@ def _notes(answer: Answer) -> list[str]:
     type=click.Path(path_type=Path),
     help="Also write the table here, one row per site, full numbers.",
 )
-def command(rates_file: Path, sites_file: Path, max_degree: int, spacing: float, csv_file: Path | None) -> None:
+def command(
+    rates_file: Path | None,
+    published_set: str | None,
+    sites_file: Path,
+    max_degree: int,
+    spacing: float,
+    csv_file: Path | None,
+) -> None:
     """Print relative sea level in mm/yr at coasts, by mass source, from mass rates in Gt/yr.
 
     Example: massfingerprint sites --rates data_small/published_rates.csv --sites data_small/coasts.csv
     """
-    answer = _answer(rates_file, sites_file, max_degree, spacing)
+    answer = _answer(_rates(rates_file, published_set), sites_file, max_degree, spacing)
     table = _table(answer)
     if csv_file is not None:
         write_text(table.to_csv(index=False, lineterminator="\n"), csv_file)

@@ -105,12 +105,13 @@ def read_rates(path: str | os.PathLike[str]) -> pd.DataFrame:
     ----------
     path : path
         CSV with ``time_start``, ``time_end`` (ISO dates), ``source``, ``mass_rate [Gt yr-1]``, ``mass_rate_sigma [Gt yr-1]``,
-        ``citation``; any unit convertible to Gt yr-1.
+        ``citation`` and optionally ``scope``; any unit convertible to Gt yr-1.
 
     Returns
     -------
     DataFrame
-        Same columns, rates in Gt yr-1 (negative = loss), sigma 1 standard uncertainty, times as datetime64.
+        Same columns, rates in Gt yr-1 (negative = loss), sigma 1 standard uncertainty, times as datetime64; ``scope``, and
+        ``error_group``, here each source its own: independent errors.
 
     Raises
     ------
@@ -119,6 +120,7 @@ def read_rates(path: str | os.PathLike[str]) -> pd.DataFrame:
     """
     frame, units = read_table(path, required=_RATE_COLUMNS)
     out = frame.loc[:, list(_RATE_COLUMNS)].copy()
+    out["scope"], out["error_group"] = frame.get("scope", ""), frame["source"]
     for column in ("mass_rate", "mass_rate_sigma"):
         held = {"units": units[column]} if column in units else {}
         _, factor = vocabulary.require(held, ("Gt yr-1",), argument=f"{path}: column {column}")

@@ -18,7 +18,13 @@ _SHEETS = ("greenland", "east_antarctica", "west_antarctica", "antarctic_peninsu
 
 
 def region_names() -> list[str]:
-    """Names of the mass sources that come with the package, each sheet followed by its parts, then the glacier regions."""
+    """Names of the mass sources that come with the package.
+
+    Returns
+    -------
+    list of str
+        Each sheet followed by its parts, then the glacier regions.
+    """
     return list(catalogue())
 
 

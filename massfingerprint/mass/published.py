@@ -42,7 +42,13 @@ def published_rows() -> pd.DataFrame:
 
 
 def published_sets() -> pd.DataFrame:
-    """Names of the sets with sources, period and citation, one row each."""
+    """List the sets of published rates.
+
+    Returns
+    -------
+    DataFrame
+        One row per set: ``set``, ``sources``, ``period``, ``citation``, ``assumption``.
+    """
     rows = []
     for name, group in published_rows().groupby("set", sort=False):
         sources = list(group["source"])
@@ -72,9 +78,10 @@ def published_rates(set_name: str) -> pd.DataFrame:
     Returns
     -------
     DataFrame
-        ``time_start time_end source mass_rate mass_rate_sigma`` [Gt yr-1], negative = loss, 1 standard uncertainty, then
-        ``interval`` (as published), ``scope citation doi from_memory assumption``. A change over a period is divided by its
-        years of 365.25 days; an interval becomes a standard uncertainty by its factor, bounds by half their distance.
+        ``time_start time_end source mass_rate mass_rate_sigma`` [Gt yr-1], negative = loss, 1 standard uncertainty;
+        ``error_group``: sources of one group share one error, groups are independent; ``interval`` as published; ``scope
+        citation doi from_memory assumption``. A change over a period is divided by its years of 365.25 days; an interval
+        becomes a standard uncertainty by its factor, bounds by half their distance.
 
     Raises
     ------
@@ -90,6 +97,8 @@ def published_rates(set_name: str) -> pd.DataFrame:
     values = np.array([_mass(row) for _, row in chosen.iterrows()])
     out = chosen[["time_start", "time_end", "source"]].copy()
     out["mass_rate"], out["mass_rate_sigma"] = values[:, 0] / per_year, values[:, 1] / per_year
+    split = chosen["assumption"].str.contains("shared in proportion")
+    out["error_group"] = chosen["source"].where(~split, "split of one published error")
     return out.join(chosen[["interval", "scope", "citation", "doi", "from_memory", "assumption"]])
 
 

@@ -129,5 +129,5 @@ def sentence(table: pd.DataFrame, *, interval: str, gt_per_mm: float) -> str:
         f"Between {row['first']} and {row['last']} {sources} {verb} {size:.0f} +- {row['change_half_width']:.0f} Gt ({interval}), "
         f"{row['sea_level']:+.1f} +- {row['sea_level_half_width']:.1f} mm of global-mean (barystatic) sea level at {gt_per_mm:g} "
         f"Gt per mm; the mean rate is {row['rate']:+.0f} +- {row['rate_half_width']:.0f} Gt/yr, "
-        f"{row['sea_level_rate']:+.2f} +- {row['sea_level_rate_half_width']:.2f} mm/yr."
+        f"{row['sea_level_rate']:+.3f} +- {row['sea_level_rate_half_width']:.3f} mm/yr."
     )

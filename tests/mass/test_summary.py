@@ -61,5 +61,5 @@ def test_a_source_without_values_leaves_no_total():
 def test_sentence(table):
     assert sentence(table, interval="90 %", gt_per_mm=361.8) == (
         "Between 2000-01-01 and 2020-01-01 the 2 mass sources together lost 2400 +- 119 Gt (90 %), +6.6 +- 0.3 mm of global-mean "
-        "(barystatic) sea level at 361.8 Gt per mm; the mean rate is -120 +- 6 Gt/yr, +0.33 +- 0.02 mm/yr."
+        "(barystatic) sea level at 361.8 Gt per mm; the mean rate is -120 +- 6 Gt/yr, +0.332 +- 0.016 mm/yr."
     )
