@@ -17,6 +17,7 @@ from massfingerprint.mass.barystatic import AR6_GIGATONNES_PER_MILLIMETRE
 from massfingerprint.mass.intervals import INTERVALS, shown
 from massfingerprint.mass.ledger import read_ledger
 from massfingerprint.mass.published import published_rates, published_sets
+from massfingerprint.mass.scope import check_scope, ledger_scopes
 from massfingerprint.mass.summary import TOTAL, sentence, summarise
 
 _GLOSSARY = (
@@ -156,6 +157,9 @@ def _wrapped(*paragraphs: str) -> list[str]:
     help="Gigatonnes per millimetre.",
 )
 @click.option("--error-model", default=None, help="independent, systematic or random_walk, if the file does not say.")
+@click.option(
+    "--drop", multiple=True, help="Leave out this source, e.g. the part of a region that is there as a whole."
+)
 @click.option("--seasonal", is_flag=True, help="Fit a yearly cycle beside the rate.")
 @click.option("--preview", is_flag=True, help="Only show what was understood of the file.")
 @click.option("--markdown", "style", flag_value="markdown", help="Print a Markdown table.")
@@ -181,6 +185,9 @@ def command(file: str, published_set: str | None, **options: Any) -> None:
     if options["preview"]:
         click.echo(_preview(ledger, file))
         return
+    names = [str(name) for name in ledger["source"].values]
+    kept = check_scope(names, scopes=ledger_scopes(ledger), drop=options["drop"])
+    ledger = ledger.isel(source=[names.index(name) for name in kept])
     table = summarise(
         ledger,
         windows=_windows(options["windows"]),

@@ -17,6 +17,8 @@ from massfingerprint.mass.covariance import component_sigmas, covariance, cross_
 
 Array = NDArray[np.float64]
 DAYS_PER_YEAR = 365.25
+# Smallest singular value of the normalised columns: below, epochs such as yearly ones cannot tell a yearly cycle from the level
+_DISTINCT = 1e-3
 _ESTIMATORS = ("least squares", "last minus first")
 
 
@@ -132,7 +134,7 @@ def _slope_weights(ledger: xr.Dataset, source: str, inside: NDArray[np.bool_], c
     if time.size < 2 + choices["acceleration"] + 2 * choices["seasonal"]:
         return None
     design = _design(_years(time), choices["acceleration"], choices["seasonal"])
-    if np.linalg.matrix_rank(design) < design.shape[1]:
+    if np.linalg.svd(design / np.linalg.norm(design, axis=0), compute_uv=False)[-1] < _DISTINCT:
         return None
     sigma = component_sigmas(ledger, source)["independent"][held]
     out[:, held] = _estimator(design, sigma)[1 : 1 + out.shape[0]]

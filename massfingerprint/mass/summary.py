@@ -125,9 +125,14 @@ def sentence(table: pd.DataFrame, *, interval: str, gt_per_mm: float) -> str:
         return "The sources do not share the window, so no total is given."
     verb, size = ("lost", -row["change"]) if row["change"] < 0 else ("gained", row["change"])
     sources = "the mass source" if count == 1 else f"the {count} mass sources together"
-    return (
+    change = (
         f"Between {row['first']} and {row['last']} {sources} {verb} {size:.0f} +- {row['change_half_width']:.0f} Gt ({interval}), "
         f"{row['sea_level']:+.1f} +- {row['sea_level_half_width']:.1f} mm of global-mean (barystatic) sea level at {gt_per_mm:g} "
-        f"Gt per mm; the mean rate is {row['rate']:+.0f} +- {row['rate_half_width']:.0f} Gt/yr, "
+        "Gt per mm"
+    )
+    if not np.isfinite(row["rate"]):
+        return f"{change}; there are too few values for a rate."
+    return (
+        f"{change}; the mean rate is {row['rate']:+.0f} +- {row['rate_half_width']:.0f} Gt/yr, "
         f"{row['sea_level_rate']:+.3f} +- {row['sea_level_rate_half_width']:.3f} mm/yr."
     )

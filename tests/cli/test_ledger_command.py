@@ -113,3 +113,26 @@ def test_wrong_files(tmp_path, capsys):
     assert "there is no such file" in capsys.readouterr().err
     assert main(["ledger", "published", "nothing like it"]) == 1
     assert capsys.readouterr().err.count("\n") == 1
+
+
+def test_the_same_ice_twice_is_refused_until_one_is_dropped(record, tmp_path, capsys):
+    path = tmp_path / "twice.csv"
+    path.write_text(
+        HEADER
+        + "\n".join(ROWS)
+        + "\n"
+        + "\n".join(row.replace("west_antarctica", "antarctica") for row in ROWS[11:])
+        + "\n"
+    )
+    assert main(["ledger", str(path)]) == 1
+    assert "'west_antarctica' and 'antarctica' both cover" in capsys.readouterr().err
+    assert main(["ledger", str(path), "--drop", "antarctica"]) == 0
+    assert "-1500 +- 64" in capsys.readouterr().out
+
+
+def test_yearly_values_have_no_seasonal_rate(record, capsys):
+    assert main(["ledger", record, "--seasonal"]) == 0
+    text = capsys.readouterr().out
+    assert "lost 1500 +- 64 Gt" in text
+    assert "too few values for a rate" in text
+    assert "nan" not in text

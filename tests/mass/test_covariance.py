@@ -252,3 +252,14 @@ def test_components_that_do_not_add_up():
     ledger["mass_change_sigma"] = ledger["mass_change_sigma"] * 2
     with pytest.raises(InputError, match="squared error components of 'ice' do not add"):
         covariance(ledger, "ice")
+
+
+def test_yearly_epochs_cannot_hold_a_yearly_cycle():
+    """First days of years differ by less than a day from a grid of 365.25: no seasonal fit is made of that."""
+    days = (
+        np.array([f"{y}-01-01" for y in range(2000, 2012)], dtype="datetime64[D]") - np.datetime64("2000-01-01")
+    ).astype(float)
+    ledger = one(days / 365.25, mass=-days, independent=1.0)
+    with pytest.raises(InputError, match="no source has enough values"):
+        rates(ledger, windows=WHOLE, seasonal=True)
+    assert np.isfinite(rates(ledger, windows=WHOLE)["rate"]).all()
