@@ -15,7 +15,7 @@ from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
 from massfingerprint.files.tables import read_rates
 from massfingerprint.load.ocean import ocean_fraction
-from massfingerprint.load.regions import regions
+from massfingerprint.load.regions import region_names, regions
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.mass.published import published_rates
 from massfingerprint.mass.scope import check_scope
@@ -79,10 +79,13 @@ def _rates(rates_file: Path | None, published_set: str | None) -> pd.DataFrame:
             "rates: give either --rates FILE or --published SET. massfingerprint ledger published lists the sets."
         )
     rates = read_rates(rates_file) if rates_file is not None else published_rates(str(published_set))
-    check_scope(
-        list(rates["source"]),
-        scopes={s: scope for s, scope in zip(rates["source"], rates["scope"], strict=True) if scope},
-    )
+    unknown = [source for source in rates["source"] if source not in region_names()]
+    if published_set is not None and unknown:
+        raise InputError(
+            f"set {published_set!r}: {unknown[0]!r} has no outline to spread mass over. Choose a set by region."
+        )
+    scopes = {source: scope for source, scope in zip(rates["source"], rates["scope"], strict=True) if scope}
+    check_scope(list(rates["source"]), scopes=scopes)
     return rates
 
 

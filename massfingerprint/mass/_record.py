@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from massfingerprint.errors import TableError
 from massfingerprint.mass._time import check_order, parse_times
+from massfingerprint.mass.intervals import sigma_of_bounds, to_sigma
 from massfingerprint.mass.units import Conversion, conversion, to_gigatonnes
 
 Array = NDArray[np.float64]
@@ -56,6 +57,21 @@ def _sigmas(cells: pd.Series, column: str, path: str) -> Array:
     return values
 
 
+def _spread(rows: pd.DataFrame, value: str, path: str) -> Array:
+    """Standard uncertainty (n,) of a value column: given as such, as a half-width, or as bounds of a named interval."""
+    if f"{value}_sigma" in rows:
+        return _sigmas(rows[f"{value}_sigma"], f"{value}_sigma", path)
+    interval = _constant(rows, "interval", path, str(rows["source"].iloc[0])) if "interval" in rows else ""
+    if not interval:
+        raise TableError(
+            f"{path}: needs a column 'interval' (such as 90 %) beside half-widths or bounds, or {value}_sigma."
+        )
+    if f"{value}_half_width" in rows:
+        return to_sigma(_sigmas(rows[f"{value}_half_width"], f"{value}_half_width", path), interval)
+    low, high = (_numbers(rows[f"{value}_{end}"], f"{value}_{end}", path) for end in ("lower", "upper"))
+    return sigma_of_bounds(_numbers(rows[value], value, path), low, high, interval)
+
+
 def _constant(rows: pd.DataFrame, column: str, path: str, source: str) -> str:
     """Value of a column that must be the same in all rows of a source; empty cells repeat it."""
     found = [cell for cell in rows[column].unique() if cell != ""]
@@ -95,11 +111,11 @@ def _components(model: str, sigma: Array, shared: Array) -> dict[str, Array]:
 
 
 def cumulative_series(rows: pd.DataFrame, *, source: str, unit: str, model: str, path: str) -> Series:
-    """Series of one source from rows with time, mass_change, mass_change_sigma."""
+    """Series of one source from rows with time, mass_change and its uncertainty."""
     time = parse_times(rows["time"], path=path, column="time")
     check_order(time, rows.index.to_numpy(), path=path, source=source)
     raw = _numbers(rows["mass_change"], "mass_change", path)
-    raw_sigma = _sigmas(rows["mass_change_sigma"], "mass_change_sigma", path)
+    raw_sigma = _spread(rows, "mass_change", path)
     how = _how(rows, unit, path, source, per_year=False)
     mass = to_gigatonnes(raw, how)
     sigma = raw_sigma * np.abs(np.broadcast_to(np.asarray(how.factor), raw.shape))
@@ -108,7 +124,7 @@ def cumulative_series(rows: pd.DataFrame, *, source: str, unit: str, model: str,
 
 
 def rate_series(rows: pd.DataFrame, *, source: str, unit: str, model: str, path: str) -> Series:
-    """Series of one source from rows with time_start, time_end, mass_rate, mass_rate_sigma, cumulated from its first start."""
+    """Series of one source from rows with time_start, time_end, mass_rate and its uncertainty, cumulated from its first start."""
     start = parse_times(rows["time_start"], path=path, column="time_start")
     end = parse_times(rows["time_end"], path=path, column="time_end")
     _check_intervals(start, end, rows, path, source)
@@ -116,7 +132,7 @@ def rate_series(rows: pd.DataFrame, *, source: str, unit: str, model: str, path:
     factor = np.broadcast_to(np.asarray(how.factor, dtype=np.float64), start.shape)
     years = (end - start) / _YEAR
     change = _numbers(rows["mass_rate"], "mass_rate", path) * factor * years
-    spread = _sigmas(rows["mass_rate_sigma"], "mass_rate_sigma", path) * np.abs(factor) * years
+    spread = _spread(rows, "mass_rate", path) * np.abs(factor) * years
     mass = np.concatenate([[0.0], np.cumsum(change)])
     walk = np.concatenate([[0.0], np.sqrt(np.cumsum(spread**2))])
     shared = np.concatenate([[0.0], np.cumsum(spread)])

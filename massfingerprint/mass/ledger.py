@@ -21,9 +21,11 @@ from massfingerprint.mass.covariance import COMPONENTS, MODELS
 
 QUANTITIES = ("cumulative", "rate")
 _NEEDED = {
-    "cumulative": ("time", "source", "mass_change", "mass_change_sigma"),
-    "rate": ("time_start", "time_end", "source", "mass_rate", "mass_rate_sigma"),
+    "cumulative": ("time", "source", "mass_change"),
+    "rate": ("time_start", "time_end", "source", "mass_rate"),
 }
+# How the uncertainty of a value may be given; all but the first need a column 'interval'.
+_UNCERTAINTY = (("_sigma",), ("_half_width",), ("_lower", "_upper"))
 _TEXT_NOTES = {"citation": "", "scope": "", "gia_removed": ""}
 _NUMBER_NOTES = {"grounding_netted": -1.0, "ocean_reaching_fraction": 1.0}
 
@@ -47,8 +49,10 @@ def read_ledger(
         ``time_start,time_end,source,mass_rate [Gt yr-1],mass_rate_sigma [Gt yr-1]``. Times are ISO dates or decimal years (2003.5
         is half-way through 2003; year + (month - 0.5)/12 is the middle of that month). Units: Gt, kg, ..., km3 with a column
         ``material`` (ice or water) and, for ice, ``density [kg m-3]``, ``density_sigma [kg m-3]``; ``m w.e.`` or ``mm w.e.`` with a
-        column ``area [km2]``; ``mm sle`` (positive = rise). Optional columns per source: ``error_model``, ``citation``,
-        ``scope``, ``gia_removed``, ``grounding_netted``, ``ocean_reaching_fraction``.
+        column ``area [km2]``; ``mm sle`` (positive = rise). Instead of a sigma, ``..._half_width``, or ``..._lower`` and
+        ``..._upper``, with a column ``interval`` (``90 %``, ``very likely``, ...; bounds give half their distance). Optional
+        columns per source: ``error_model``, ``citation``, ``scope``, ``gia_removed``, ``grounding_netted``,
+        ``ocean_reaching_fraction``.
     quantity : str
         ``"cumulative"`` or ``"rate"``; rates are returned cumulated from each source's first interval.
     units : str, optional
@@ -105,8 +109,11 @@ def _series(path: str, quantity: str, units: str | None, columns: dict[str, str]
         raise TableError(
             f"{path}: lacks the column {missing[0]}; found {', '.join(found)}. {nearest_names(missing[0], found)}"
         )
+    value = _NEEDED[quantity][-1]
+    if not any(all(f"{value}{end}" in frame for end in ends) for ends in _UNCERTAINTY):
+        forms = f"{value}_sigma, or {value}_half_width, or {value}_lower and {value}_upper with a column interval"
+        raise TableError(f"{path}: lacks an uncertainty: give {forms}.")
     build = cumulative_series if quantity == "cumulative" else rate_series
-    value = _NEEDED[quantity][-2]
     out = []
     for source, rows in frame.groupby("source", sort=False):
         if not source:
@@ -127,9 +134,10 @@ def _unit(rows: pd.DataFrame, held: dict[str, str], value: str, units: str | Non
     unit = held.get(value, units)
     if unit is None:
         raise TableError(f"{path}: column {value} has no unit. Write it as '{value} [Gt]', or pass units.")
-    sigma = held.get(f"{value}_sigma", unit)
-    if sigma != unit:
-        raise TableError(f"{path}: {value} is in {unit!r} but {value}_sigma in {sigma!r}. Give both in one unit.")
+    for end in ("_sigma", "_half_width", "_lower", "_upper"):
+        other = held.get(f"{value}{end}", unit)
+        if other != unit:
+            raise TableError(f"{path}: {value} is in {unit!r} but {value}{end} in {other!r}. Give both in one unit.")
     if value == "mass_rate" and not unit.endswith(" yr-1"):
         raise TableError(f"{path}: column mass_rate must be per year, as 'Gt yr-1', got {unit!r}.")
     return unit

@@ -167,3 +167,8 @@ def test_the_same_ice_twice_is_refused(tmp_path, capsys):
         "'greenland' and 'greenland_west' both cover greenland_west, sheet: it would count twice"
         in capsys.readouterr().err
     )
+
+
+def test_a_published_total_without_an_outline(capsys):
+    assert main(["sites", "--published", "glambie 2025", "--sites", str(SITES), *QUICK]) == 1
+    assert "'glaciers' has no outline to spread mass over. Choose a set by region." in capsys.readouterr().err

@@ -111,6 +111,20 @@ def test_units_of_records(record, unit, extra, cells, gigatonnes, sigma):
     assert ledger.attrs["units_read"]
 
 
+def test_intervals_in(record):
+    """A half-width of 90 % and asymmetric bounds of 95 %: 1.6449 and 2 x 1.96 standard uncertainties."""
+    text = "time,source,mass_change [Gt],mass_change_half_width [Gt],interval\n2003-01-01,a,-10,16.448536,90 %\n"
+    assert float(read(record(text))["mass_change_sigma"][0, 0]) == pytest.approx(10.0, rel=1e-7)
+    header = "time,source,mass_change [Gt],mass_change_lower [Gt],mass_change_upper [Gt],interval\n"
+    text = header + "2003-01-01,a,-10,-30,9.19928,95 %\n"
+    assert float(read(record(text))["mass_change_sigma"][0, 0]) == pytest.approx(10.0, rel=1e-6)
+    rate = (
+        RATE.replace("sigma", "half_width").rstrip() + ",interval\n2001-01-01,2002-01-01,a,-100,16.448536,very likely\n"
+    )
+    ledger = read_ledger(record(rate), quantity="rate")
+    assert float(ledger["mass_change_sigma"][0, 1]) == pytest.approx(10.0 * 365 / YEAR, rel=1e-7)
+
+
 def test_density_error_is_shared_by_all_epochs(record):
     """850 +- 60 kg m-3 (volume to mass of glaciers): 7 % of every value, fully correlated in time."""
     header = "time,source,mass_change [km3],mass_change_sigma [km3],material,density [kg m-3],density_sigma [kg m-3]\n"
@@ -210,6 +224,18 @@ WRONG = [
         {},
         InputError,
         "m w.e. needs a positive area. Add a column 'area [km2]'.",
+    ),
+    (
+        LONG.replace("_sigma", "_error") + ROW,
+        {},
+        TableError,
+        "lacks an uncertainty: give mass_change_sigma, or",
+    ),
+    (
+        LONG.replace("sigma", "half_width") + ROW,
+        {},
+        TableError,
+        "needs a column 'interval' (such as 90 %) beside",
     ),
     (LONG.replace("source", "sauce") + ROW, {}, TableError, "lacks the column"),
     (LONG.replace("source", "time") + ROW, {}, TableError, "column 'time' stands there twice. Keep one."),
