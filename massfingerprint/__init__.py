@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from massfingerprint.load.spread import spread_mass
     from massfingerprint.mass.barystatic import barystatic
     from massfingerprint.mass.combine import align, rebase, sum_sources
+    from massfingerprint.mass.correlation import read_correlation, with_correlation
     from massfingerprint.mass.covariance import covariance
     from massfingerprint.mass.ledger import read_ledger
     from massfingerprint.mass.published import published_rates, published_sets
@@ -45,6 +46,8 @@ _HOMES = {
     "published_sets": "mass.published",
     "range_within": "sealevel.within",
     "rates": "mass.rates",
+    "read_correlation": "mass.correlation",
+    "with_correlation": "mass.correlation",
     "read_ledger": "mass.ledger",
     "read_regions": "load.regions",
     "read_sites": "sphere.points",
@@ -74,6 +77,7 @@ __all__ = [
     "published_sets",
     "range_within",
     "rates",
+    "read_correlation",
     "read_ledger",
     "read_regions",
     "read_sites",
@@ -85,6 +89,7 @@ __all__ = [
     "solve_fingerprints",
     "spread_mass",
     "sum_sources",
+    "with_correlation",
     "write_netcdf",
 ]
 

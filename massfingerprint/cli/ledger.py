@@ -14,10 +14,11 @@ from massfingerprint.constants import GIGATONNES_PER_MILLIMETRE
 from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
 from massfingerprint.mass.barystatic import AR6_GIGATONNES_PER_MILLIMETRE
+from massfingerprint.mass.correlation import read_correlation, with_correlation
 from massfingerprint.mass.intervals import INTERVALS, shown
 from massfingerprint.mass.ledger import read_ledger
 from massfingerprint.mass.published import published_rates, published_sets
-from massfingerprint.mass.scope import check_scope, ledger_scopes
+from massfingerprint.mass.scope import check_scope, corrections, ledger_scopes
 from massfingerprint.mass.summary import TOTAL, sentence, summarise
 
 _GLOSSARY = (
@@ -158,6 +159,9 @@ def _wrapped(*paragraphs: str) -> list[str]:
 )
 @click.option("--error-model", default=None, help="independent, systematic or random_walk, if the file does not say.")
 @click.option(
+    "--correlation", type=click.Path(path_type=Path), help="CSV of correlations between sources (square table)."
+)
+@click.option(
     "--drop", multiple=True, help="Leave out this source, e.g. the part of a region that is there as a whole."
 )
 @click.option("--seasonal", is_flag=True, help="Fit a yearly cycle beside the rate.")
@@ -182,12 +186,15 @@ def command(file: str, published_set: str | None, **options: Any) -> None:
             f"arguments: {published_set!r} after FILE is only for 'published'. Quote file names with blanks."
         )
     ledger = read_ledger(file, quantity=options["quantity"], error_model=options["error_model"])
+    corrections(ledger)
     if options["preview"]:
         click.echo(_preview(ledger, file))
         return
     names = [str(name) for name in ledger["source"].values]
     kept = check_scope(names, scopes=ledger_scopes(ledger), drop=options["drop"])
     ledger = ledger.isel(source=[names.index(name) for name in kept])
+    if options["correlation"] is not None:
+        ledger = with_correlation(ledger, read_correlation(options["correlation"]))
     table = summarise(
         ledger,
         windows=_windows(options["windows"]),

@@ -17,6 +17,7 @@ from massfingerprint.files.tables import read_rates
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.regions import region_names, regions
 from massfingerprint.load.spread import spread_mass
+from massfingerprint.mass.intervals import shown
 from massfingerprint.mass.published import published_rates
 from massfingerprint.mass.scope import check_scope
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
@@ -185,6 +186,14 @@ def _grid_of_words(answer: Answer, table: pd.DataFrame) -> list[str]:
     return lines
 
 
+def _rounding(answer: Answer) -> list[str]:
+    """Footnote if, at any site, the rounded parts do not add to the rounded total."""
+    parts = answer.by_source("relative_sea_level")
+    names = [str(name) for name in answer.rates["source"]]
+    notes = [shown(dict(zip(names, here, strict=True)), float(here.sum()), decimals=3)[2] for here in parts.T]
+    return [note for note in dict.fromkeys(notes) if note]
+
+
 def _notes(answer: Answer) -> list[str]:
     degree = answer.prepared.max_degree
     text = (
@@ -195,7 +204,9 @@ def _notes(answer: Answer) -> list[str]:
         f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
         f"not resolved: within {RESOLVED_BEYOND:g} km of the ice named, where higher degrees would change the value."
     )
-    return [line for paragraph in (text, _LEFT_OUT, _CAUTION) for line in textwrap.wrap(paragraph, 110)]
+    return [
+        line for paragraph in (text, *_rounding(answer), _LEFT_OUT, _CAUTION) for line in textwrap.wrap(paragraph, 110)
+    ]
 
 
 @click.command(name="sites")

@@ -136,3 +136,11 @@ def test_yearly_values_have_no_seasonal_rate(record, capsys):
     assert "lost 1500 +- 64 Gt" in text
     assert "too few values for a rate" in text
     assert "nan" not in text
+
+
+def test_correlated_sources(record, tmp_path, capsys):
+    """50 and 40 Gt fully correlated: 90 instead of 64."""
+    table = tmp_path / "correlation.csv"
+    table.write_text("source,greenland,west_antarctica\ngreenland,1,1\nwest_antarctica,1,1\n")
+    assert main(["ledger", record, "--correlation", str(table)]) == 0
+    assert "lost 1500 +- 90 Gt" in capsys.readouterr().out
