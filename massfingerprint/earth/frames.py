@@ -8,6 +8,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from massfingerprint.arguments import one_of
+from massfingerprint.sphere._transform import degree_of_count, index_of
 
 FRAMES = ("CE", "CM", "CF", "CL", "CH")
 
@@ -83,9 +84,8 @@ def geocentre_motion(load: NDArray[np.float64], love: xr.Dataset, frame: str) ->
     Centre of mass of a thin shell: sum of r dm / M in CE, times 1 + k'_1 of the frame (Blewitt 2003, from memory).
     """
     table = in_frame(love, frame)
-    degrees = round((np.sqrt(8.0 * load.shape[-1] + 1.0) - 3.0) / 2.0)
-    # coefficients of degree 1 stand at position 1 (order 0) and degrees + 1 (order 1)
-    vector = np.stack([load[..., 0, degrees + 1], load[..., 1, degrees + 1], load[..., 0, 1]], axis=-1)
+    zonal, tesseral = (index_of(1, order, degree_of_count(load.shape[-1])) for order in (0, 1))
+    vector = np.stack([load[..., 0, tesseral], load[..., 1, tesseral], load[..., 0, zonal]], axis=-1)
     # integral of a unit-vector component times its orthonormal function is sqrt(4 pi / 3); M = 4/3 pi a^3 rho
     scale = np.sqrt(4.0 * np.pi / 3.0) * 3.0 / (4.0 * np.pi * love.attrs["mean_density"])
     return vector * scale * (1.0 + float(table["k_load"][1]))

@@ -31,7 +31,8 @@ def published_rows() -> pd.DataFrame:
     DataFrame
         ``set source scope time_start time_end quantity`` (rate: per year; change: over the period), ``mass``,
         ``mass_half_width`` [Gt], ``sea_level``, ``sea_level_lower``, ``sea_level_upper`` [mm], ``interval``, ``factor``
-        [Gt mm-1], ``citation doi from_memory assumption``; NaN where the paper prints nothing.
+        [Gt mm-1], ``error_group`` (rows of one group share one error; empty: its own), ``citation doi from_memory
+        assumption``; NaN where the paper prints nothing.
     """
     table = open_bundled_table(_FILE).rename(columns=_NUMBERS)
     for name in _NUMBERS.values():
@@ -97,8 +98,7 @@ def published_rates(set_name: str) -> pd.DataFrame:
     values = np.array([_mass(row) for _, row in chosen.iterrows()])
     out = chosen[["time_start", "time_end", "source"]].copy()
     out["mass_rate"], out["mass_rate_sigma"] = values[:, 0] / per_year, values[:, 1] / per_year
-    split = chosen["assumption"].str.contains("shared in proportion")
-    out["error_group"] = chosen["source"].where(~split, "split of one published error")
+    out["error_group"] = chosen["error_group"].where(chosen["error_group"] != "", chosen["source"])
     return out.join(chosen[["interval", "scope", "citation", "doi", "from_memory", "assumption"]])
 
 

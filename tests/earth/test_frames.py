@@ -56,7 +56,7 @@ def test_meaning_of_the_frames(love):
 
 
 def test_mean_displacement_in_cf_vanishes_over_the_sphere(love):
-    """Vector mean of the degree-1 displacement of a point load, summed on a grid; 1e-15 of its size."""
+    """Mean along the axis of the degree-1 displacement of a polar load over 4000 bands of equal area; midpoint rule, 1e-7."""
     table = in_frame(love, "CF")
     h, l, _ = degree_one(table)  # noqa: E741
     x = (np.arange(4000) + 0.5) / 2000 - 1.0  # sin(lat), equal areas

@@ -54,14 +54,6 @@ def test_rigid_without_the_attraction_of_the_water(love):
     assert series[0] == pytest.approx(mean, rel=1e-12)
 
 
-def test_zero_near_20_degrees_and_the_mean_at_60():
-    """The same closed form with rho_w/rho_e of 1000/5517 (Woodward 1888): zero near 20 degrees, the mean at 60."""
-    x = 3 * 1000 / 5517
-    ratio = lambda theta: 1 - x * (1 / (2 * np.sin(np.deg2rad(theta) / 2)) - 1)  # noqa: E731
-    assert ratio(60.0) == pytest.approx(1.0, abs=1e-15)
-    assert ratio(19.0) < 0 < ratio(21.0)
-
-
 def test_rigid_with_the_attraction_of_the_water(love):
     """S / S_mean = 1 - x sum_l>=1 (2l+1)/((2l+1) - x) P_l(cos theta), x = 3 rho_w / rho_e (derived; exact)."""
     prepared = prepare_solver(everywhere(), rigid(love), max_degree=DEGREE, rotation=False)
