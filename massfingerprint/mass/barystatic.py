@@ -6,7 +6,7 @@ import xarray as xr
 from massfingerprint.arguments import real_number
 from massfingerprint.constants import FRESH_WATER_DENSITY, GIGATONNES_PER_MILLIMETRE, KILOGRAMS_PER_GIGATONNE
 from massfingerprint.errors import InputError
-from massfingerprint.mass.covariance import component_sigmas, source_correlation
+from massfingerprint.mass.covariance import total_sigma
 
 AR6_GIGATONNES_PER_MILLIMETRE = 362.5  # IPCC AR6 WGI ch. 9 footnote 3 (Fox-Kemper et al. 2021)
 
@@ -82,9 +82,4 @@ def _total(ledger: xr.Dataset, per_gt: xr.DataArray) -> tuple[np.ndarray, np.nda
     mass, scale = ledger["mass_change"].transpose("source", "time").values, per_gt.values
     whole = np.isfinite(mass).all(axis=0)
     total = np.where(whole, -(np.nan_to_num(mass) * scale[:, None]).sum(axis=0), np.nan) + 0.0
-    names = [str(name) for name in ledger["source"].values]
-    parts = np.stack([np.stack(list(component_sigmas(ledger, name).values())) for name in names]) * scale[:, None, None]
-    related = np.array([[source_correlation(ledger, one, two) for two in names] for one in names])
-    # at one time every component's covariance between two sources is the product of their sigmas times the correlation
-    variance = np.einsum("ict,ij,jct->t", np.nan_to_num(parts), related, np.nan_to_num(parts))
-    return total, np.where(whole, np.sqrt(np.maximum(variance, 0.0)), np.nan)
+    return total, total_sigma(ledger, scale)

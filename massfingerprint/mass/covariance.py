@@ -135,3 +135,31 @@ def cross_covariance(ledger: xr.Dataset, first: str, second: str, *, component: 
     return xr.DataArray(
         np.where(absent, np.nan, scale * total), dims=("time", "time_other"), coords=coords, attrs=attrs
     )
+
+
+def total_sigma(ledger: xr.Dataset, weights: Array) -> Array:
+    """Standard uncertainty of a weighted sum over sources at each time.
+
+    Parameters
+    ----------
+    ledger : Dataset (source, time)
+        From ``read_ledger``; correlations between sources count.
+    weights : array (nsource,) or (nsource, n)
+        Any unit per Gt; one column for each sum that is wanted.
+
+    Returns
+    -------
+    array (ntime,) or (ntime, n)
+        Gt times the weights' unit; NaN at times at which any source has no value.
+    """
+    names = [str(name) for name in ledger["source"].values]
+    parts = np.stack([np.stack(list(component_sigmas(ledger, name).values())) for name in names])
+    whole = np.asarray(np.isfinite(parts).all(axis=(0, 1)))
+    related = np.array([[source_correlation(ledger, one, two) for two in names] for one in names])
+    # at one time every component's covariance between two sources is the product of their sigmas times the correlation
+    held = np.nan_to_num(parts)
+    between = np.einsum("ict,ij,jct->tij", held, related, held)
+    columns = weights.reshape(len(names), -1)
+    variance = np.einsum("ik,tij,jk->tk", columns, between, columns, optimize=True)
+    out = np.where(whole[:, None], np.sqrt(np.maximum(variance, 0.0)), np.nan)
+    return out[:, 0] if weights.ndim == 1 else out

@@ -151,14 +151,27 @@ def combination_sigma(ledger: xr.Dataset, weights: Mapping[str, Array]) -> float
     weights : mapping of source to (ntime,) array
         0 where a value takes no part; times without a value must have weight 0.
     """
-    names, total = list(weights), 0.0
+    return float(np.sqrt(max(combination_covariance(ledger, weights).sum(), 0.0)))
+
+
+def combination_covariance(ledger: xr.Dataset, weights: Mapping[str, Array]) -> Array:
+    """Covariance (nsource, nsource), in Gt2 times the weights' unit squared, of w(source) x(source) summed over time.
+
+    Parameters
+    ----------
+    ledger : Dataset (source, time)
+        From ``read_ledger``.
+    weights : mapping of source to (ntime,) array
+        As for :func:`combination_sigma`; the order of the mapping is that of rows and columns.
+    """
+    names = list(weights)
+    out = np.zeros((len(names), len(names)))
     for i, first in enumerate(names):
-        for second in names[: i + 1]:
-            if first != second and source_correlation(ledger, first, second) == 0.0:
-                continue
-            matrix = np.nan_to_num(cross_covariance(ledger, first, second).values)
-            total += (1.0 if first == second else 2.0) * float(weights[first] @ matrix @ weights[second])
-    return float(np.sqrt(max(total, 0.0)))
+        for j, second in enumerate(names[: i + 1]):
+            if first == second or source_correlation(ledger, first, second) != 0.0:
+                matrix = np.nan_to_num(cross_covariance(ledger, first, second).values)
+                out[i, j] = out[j, i] = float(weights[first] @ matrix @ weights[second])
+    return out
 
 
 def rates(
