@@ -33,6 +33,18 @@ class TableError(InputError):
     """A text table whose columns, numbers or dates cannot be read."""
 
 
+class StudyError(InputError):
+    """A study file that cannot be run; ``problems`` holds every one found, one line each."""
+
+    def __init__(self, message: str, problems: tuple[str, ...] = ()) -> None:
+        super().__init__(message)
+        self.problems = problems
+
+
+class FolderError(MassFingerprintError, OSError):
+    """An output folder that is there already, in use by another run, or cannot be written."""
+
+
 class MissingFileError(MassFingerprintError, FileNotFoundError):
     """A file that is not where it was said to be."""
 

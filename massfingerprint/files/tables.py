@@ -3,6 +3,7 @@
 import os
 import re
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -156,3 +157,51 @@ def _check_rates(rates: pd.DataFrame, path: str | os.PathLike[str]) -> None:
         raise TableError(
             f"{path}: line {repeated.index[0]}: source {repeated.iloc[0]!r} stands there twice. Keep one row each."
         )
+
+
+def csv_text(table: pd.DataFrame) -> str:
+    """Comma-separated text of a table, UTF-8, line feeds; numbers in full, gaps empty.
+
+    A text cell or header that a spreadsheet would run as a formula (it starts with ``=``, ``+``, ``-``, ``@``, a tab or a carriage
+    return) gets an apostrophe in front.
+    """
+    safe = table.rename(columns=_harmless)
+    texts = {name: safe[name].map(_harmless) for name in safe.columns if safe[name].dtype.kind not in "iufbM"}
+    return str(safe.assign(**texts).to_csv(index=False, lineterminator="\n"))
+
+
+def _harmless(cell: Any) -> Any:
+    return f"'{cell}" if isinstance(cell, str) and cell.startswith(("=", "+", "-", "@", "\t", "\r")) else cell
+
+
+def read_plain_csv(path: str | os.PathLike[str], *, numeric: tuple[str, ...]) -> pd.DataFrame:
+    """Table as :func:`csv_text` wrote it: the apostrophe of harmless formulas taken off.
+
+    Parameters
+    ----------
+    path : path
+        The file.
+    numeric : tuple of str
+        Columns that hold numbers where they are there, exact to the bit, gaps as NaN; all others are text.
+
+    Raises
+    ------
+    MissingFileError
+        If there is no such file.
+    TableError
+        If it is not such a table.
+    """
+    source = Path(path)
+    if not source.is_file():
+        raise MissingFileError(f"{source}: there is no such file. Check the path.")
+    try:
+        table = pd.read_csv(source, encoding="utf-8", dtype=str, keep_default_na=False)
+        numbers_of = {name: [float(cell or "nan") for cell in table[name]] for name in numeric if name in table}
+    except (UnicodeDecodeError, pd.errors.ParserError, pd.errors.EmptyDataError, ValueError) as error:
+        raise TableError(f"{source}: cannot be read as a table: {str(error).strip()}. Write it again.") from error
+    texts = {name: table[name].map(_plain) for name in table.columns if name not in numbers_of}
+    return table.assign(**texts, **numbers_of).rename(columns=_plain)
+
+
+def _plain(cell: str) -> str:
+    return cell[1:] if cell.startswith("'") and _harmless(cell[1:]) == cell else cell
