@@ -24,10 +24,12 @@ if TYPE_CHECKING:
     from massfingerprint.mass.scope import check_scope
     from massfingerprint.options import set_options
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
+    from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
     from massfingerprint.sealevel.within import range_within
     from massfingerprint.sphere.points import read_sites
+    from massfingerprint.study.run import run_study
 
 __version__ = "0.1.0"
 
@@ -55,6 +57,9 @@ _HOMES = {
     "region_names": "load.regions",
     "regions": "load.regions",
     "retain_on_land": "load.retained",
+    "run_study": "study.run",
+    "sea_level_rates": "sealevel.series",
+    "sea_level_series": "sealevel.series",
     "set_options": "options",
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
@@ -85,6 +90,9 @@ __all__ = [
     "region_names",
     "regions",
     "retain_on_land",
+    "run_study",
+    "sea_level_rates",
+    "sea_level_series",
     "set_options",
     "solve_fingerprints",
     "spread_mass",

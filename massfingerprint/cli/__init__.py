@@ -11,9 +11,11 @@ from massfingerprint import __version__
 from massfingerprint.errors import MassFingerprintError
 
 _COMMANDS = {
+    "explain": "Where a number of a study comes from: inputs, formula, factor, citation, checksum.",
     "earth": "Love numbers of the built-in Earth.",
     "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
     "sites": "Sea level at named coasts from published mass rates.",
+    "study": "A whole study: one file in, a folder of answers out.",
 }
 
 

@@ -1,0 +1,109 @@
+"""The chain is the earlier pieces, one after the other; kept patterns change nothing."""
+
+import numpy as np
+import pytest
+import xarray as xr
+
+import massfingerprint as mf
+from massfingerprint.study.inputs import read_study
+from massfingerprint.study.run import KEPT, compute_study, run_study
+
+
+def test_the_chain_gives_what_its_pieces_give(done):
+    """Every number against the public functions called one by one; rounding only."""
+    ocean = mf.ocean_fraction(2.0)
+    solver = mf.prepare_solver(ocean, mf.love_numbers(max_degree=32), max_degree=32)
+    load = mf.spread_mass(mf.regions("greenland", "west_antarctica", "glaciers_01"), ocean)
+    patterns = mf.solve_fingerprints(solver, load, outputs=("relative_sea_level", "sea_surface", "bedrock_up"))
+    here = mf.at_sites(patterns, done.inputs.sites)
+    for name in ("relative_sea_level", "sea_surface", "bedrock_up"):
+        scale = float(abs(here[name]).max())
+        for end in ("", "_truncation", "_tapered"):
+            np.testing.assert_allclose(
+                done.at_sites[f"{name}{end}"].values, here[f"{name}{end}"].values, atol=1e-12 * scale
+            )
+    ledger = done.inputs.ledger
+    series = mf.sea_level_series(here, ledger)["relative_sea_level_total"]
+    np.testing.assert_allclose(done.series["relative_sea_level_total"].values, series.values, rtol=1e-10, atol=1e-12)
+    rate = mf.sea_level_rates(here, ledger, windows=done.inputs.windows)["relative_sea_level_total"]
+    np.testing.assert_allclose(done.rates["relative_sea_level_total"].values, rate.values, rtol=1e-10)
+    np.testing.assert_allclose(
+        done.patterns["relative_sea_level"].values, patterns["relative_sea_level"].values, rtol=0, atol=1e-12
+    )
+    mean = mf.barystatic(ledger, gt_per_mm=solver.gigatonnes_per_millimetre)
+    np.testing.assert_allclose(done.global_mean["sea_level_total"].values, mean["sea_level_total"].values)
+
+
+def test_kept_patterns_give_the_same_bits(study_file):
+    recipe, inputs = read_study(study_file)
+    kept = study_file.parent / KEPT
+    fresh = compute_study(recipe, inputs)
+    first = compute_study(recipe, inputs, kept=kept)
+    again = compute_study(recipe, inputs, kept=kept)
+    assert [fresh.account["reused"], first.account["reused"], again.account["reused"]] == [0, 0, 3]
+    for study in (first, again):
+        xr.testing.assert_identical(study.patterns, fresh.patterns)
+        xr.testing.assert_identical(study.rates, fresh.rates)
+
+
+def test_a_damaged_kept_pattern_is_noticed_and_solved_again(study_file):
+    recipe, inputs = read_study(study_file)
+    kept = study_file.parent / KEPT
+    first = compute_study(recipe, inputs, kept=kept)
+    entry = sorted(kept.iterdir())[1]
+    content = bytearray(entry.read_bytes())
+    content[-100] ^= 1
+    entry.write_bytes(bytes(content))
+    again = compute_study(recipe, inputs, kept=kept)
+    assert again.account["reused"] == 2
+    assert len(again.account["damaged"]) == 1
+    assert entry.name in again.account["damaged"][0]
+    xr.testing.assert_identical(again.patterns, first.patterns)
+    assert compute_study(recipe, inputs, kept=kept).account == {**again.account, "reused": 3, "damaged": [],
+        "seconds": pytest.approx(again.account["seconds"], abs=60.0)}  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "reused"),
+    [
+        ("max_degree = 32", "max_degree = 31", 0),
+        ("spacing = 2.0", "spacing = 3.0", 0),
+        ("[output]", "[earth]\nrotation = false\n[output]", 0),
+        ("[output]", '[output]\nreference_frame = "CF"', 0),
+        ("[output]", '[output]\nfields = ["geoid"]', 0),
+        ('title = "Small study"', 'title = "Another"', 3),
+    ],
+)
+def test_patterns_are_reused_only_for_the_same_inputs(study_file, old, new, reused):
+    kept = study_file.parent / KEPT
+    compute_study(*read_study(study_file), kept=kept)
+    study_file.write_text(study_file.read_text(encoding="utf-8").replace(old, new), encoding="utf-8")
+    assert compute_study(*read_study(study_file), kept=kept).account["reused"] == reused
+
+
+def test_since_moves_the_zero_and_not_the_rates(study_file):
+    recipe, inputs = read_study(study_file)
+    plain = compute_study(recipe, inputs)
+    study_file.write_text(study_file.read_text(encoding="utf-8") + "since = 2005-01-01\n", encoding="utf-8")
+    moved = compute_study(*read_study(study_file))
+    at = {"time": "2005-01-01"}
+    assert float(abs(moved.series["relative_sea_level_total"].sel(at)).max()) == 0.0
+    assert moved.series.attrs["reference_epoch"] == "2005-01-01"
+    np.testing.assert_allclose(
+        moved.rates["relative_sea_level_total"].values, plain.rates["relative_sea_level_total"].values, rtol=1e-12
+    )
+
+
+def test_without_writing_nothing_is_left(study_file):
+    before = sorted(study_file.parent.iterdir())
+    study = run_study(study_file, write=False)
+    assert study.folder is None
+    assert sorted(study_file.parent.iterdir()) == before
+
+
+def test_progress_goes_from_nothing_to_all(study_file):
+    seen = []
+    run_study(study_file, progress=lambda *step: seen.append(step))
+    assert [step for step in seen if step[0] == "patterns"] == [("patterns", n, 3) for n in (1, 2, 3)]
+    assert seen[-1][0] == "files"
+    assert seen[-1][1] == seen[-1][2]
