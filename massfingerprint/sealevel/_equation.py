@@ -5,9 +5,13 @@
 T holds the elastic response and, at degree 2, the rotational feedback; P cuts the product at the degree of the solution; c is
 uniform and follows from mass. The state stays spectral, the product is formed on Gauss-Legendre rings fine enough to be exact
 for the band-limited ocean, so the discrete operator is self-adjoint.  Source: Farrell & Clark 1976, GJRAS 46:647.
+
+One round forms one product. What it leaves (the residual) is corrected on the low degrees, where rounds contract least, by
+``_levels``; the states so far are combined to the smallest residual (Anderson 1965, J. ACM 12:547; here linear, so it is exact).
 """
 
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -16,8 +20,9 @@ from massfingerprint.sphere._transform import GaussLegendreRings, inner_product
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
-_DIVERGED = 1e6  # growth of the answer over its first round that no convergent iteration shows
 _ROOT = np.sqrt(4.0 * np.pi)  # degree-0 coefficient of the constant 1
+_KEPT = 3  # states combined; older ones add nothing once the low degrees are corrected
+MAX_ROUNDS = 40
 
 
 @dataclass(frozen=True)
@@ -46,7 +51,11 @@ class Operator:
 
     def ocean_load(self, sea_level: Complex) -> Complex:
         """Coefficients (n,) of rho_w P(O S), kg m-2."""
-        return self.water_density * self.rings.analyse(self.ocean_on_rings * self.rings.synthesise(sea_level))
+        field = self.rings.synthesise(sea_level)
+        field *= self.ocean_on_rings
+        out = self.rings.analyse(field)
+        out *= self.water_density
+        return out
 
     def sea_level(self, load: Complex, ice_mass: float) -> tuple[Complex, float]:
         """S (n,) in m of a whole load, and its uniform part c in m, from the mass of ice (integral over the unit sphere)."""
@@ -55,6 +64,18 @@ class Operator:
         uniform = (-ice_mass / self.water_density - inner_product(self.ocean, shape)) / ocean_area
         shape[0] += uniform * _ROOT
         return shape, uniform
+
+    def homogeneous(self, sea_level: Complex) -> Complex:
+        """What one round makes of a sea level (n,) when there is no ice."""
+        return self.sea_level(self.ocean_load(sea_level), 0.0)[0]
+
+
+class Correction(Protocol):
+    """Takes a residual (n,) to an approximate error of the state (n,), linearly."""
+
+    def __call__(self, residual: Complex) -> Complex:
+        """Approximate error of the state that left this residual."""
+        ...
 
 
 @dataclass(frozen=True)
@@ -85,12 +106,23 @@ class Solution:
     converged: bool
 
 
+@dataclass
+class _State:
+    """A sea level, the load it makes, and what the equation leaves of it."""
+
+    sea_level: Complex
+    load: Complex
+    residual: Complex
+
+
 def _norm(coefficients: Complex) -> float:
     return float(np.sqrt(inner_product(coefficients, coefficients)))
 
 
-def solve(operator: Operator, ice: Complex, *, tolerance: float, max_rounds: int = 100) -> Solution:
-    """Solve the equation for one ice load by plain iteration.
+def solve(
+    operator: Operator, ice: Complex, *, tolerance: float, correction: Correction, max_rounds: int | None = None
+) -> Solution:
+    """Solve the equation for one ice load.
 
     Parameters
     ----------
@@ -100,28 +132,49 @@ def solve(operator: Operator, ice: Complex, *, tolerance: float, max_rounds: int
         Coefficients of the ice load, kg m-2.
     tolerance : float
         On the relative residual.
-    max_rounds : int
-        Where to give up.
+    correction : callable
+        From a residual to an approximate error of the state; with the identity the iteration is plain.
+    max_rounds : int, optional
+        Where to give up, ``MAX_ROUNDS`` by default.
 
     Returns
     -------
     Solution
-        Converged or not; an iteration whose answer grows without bound is stopped early.
+        Converged or not.
     """
     ice_mass = float(ice[0].real) * _ROOT
-    barystatic = -ice_mass / (operator.water_density * operator.ocean[0].real * _ROOT)
-    load = ice + operator.water_density * barystatic * operator.ocean
-    sea_level, uniform = operator.sea_level(load, ice_mass)
-    residual, rounds, first = np.inf, 0, 0.0
-    while rounds < max_rounds and residual > tolerance:
-        load = ice + operator.ocean_load(sea_level)
-        following, uniform = operator.sea_level(load, ice_mass)
+    state = _State(np.zeros_like(ice), ice, operator.sea_level(ice, ice_mass)[0])
+    kept: list[_State] = []
+    relative, rounds = np.inf, 0
+    while rounds < (max_rounds or MAX_ROUNDS) and relative > tolerance:
+        sea_level = state.sea_level + correction(state.residual)
+        load = operator.ocean_load(sea_level)
+        load += ice
+        following, _ = operator.sea_level(load, ice_mass)
         size = _norm(following)
-        residual = _norm(following - sea_level) / size if size > 0.0 else 0.0
-        sea_level, rounds = following, rounds + 1
-        first = first or size
-        if not size <= _DIVERGED * first:
-            break
+        following -= sea_level
+        kept = [*kept[1 - _KEPT :], _State(sea_level, load, following)]
+        state, rounds = _smallest(kept), rounds + 1
+        relative = _norm(state.residual) / size if size > 0.0 else 0.0
+    _, uniform = operator.sea_level(state.load, ice_mass)
     weight = _norm(ice)
-    unbalanced = abs(float(load[0].real)) / weight if weight > 0.0 else abs(float(load[0].real))
-    return Solution(load, uniform, rounds, residual, unbalanced, bool(residual <= tolerance))
+    unbalanced = abs(float(state.load[0].real)) / weight if weight > 0.0 else abs(float(state.load[0].real))
+    return Solution(state.load, uniform, rounds, relative, unbalanced, bool(relative <= tolerance))
+
+
+def _smallest(kept: list[_State]) -> _State:
+    """Combination of states (their weights add to 1) whose residual is smallest; the last one alone if there is no other."""
+    last = kept[-1]
+    steps = [state.residual - last.residual for state in kept[:-1]]
+    sizes = np.array([_norm(step) for step in steps])
+    if not steps or not (sizes > 0.0).all():
+        return last
+    gram = np.array([[inner_product(a, b) for b in steps] for a in steps]) / np.outer(sizes, sizes)
+    right = np.array([-inner_product(a, last.residual) for a in steps]) / sizes
+    weights = np.linalg.lstsq(gram, right, rcond=1e-12)[0] / sizes
+    out = _State(last.sea_level.copy(), last.load.copy(), last.residual.copy())
+    for weight, state, step in zip(weights, kept[:-1], steps, strict=True):
+        out.sea_level += weight * (state.sea_level - last.sea_level)
+        out.load += weight * (state.load - last.load)
+        out.residual += weight * step
+    return out

@@ -146,7 +146,12 @@ def solve_fingerprints(
     store = _Store(names, flat.shape[0], prepared.max_degree, grid)
     for position, values in enumerate(flat):
         ice = _transform.analyse(grid.to_rings(values) * scale, band, grid.first_azimuth)
-        solution = solve(prepared.operator, _transform.resized(ice, prepared.max_degree), tolerance=tolerance)
+        solution = solve(
+            prepared.operator,
+            _transform.resized(ice, prepared.max_degree),
+            tolerance=tolerance,
+            correction=prepared.correction,
+        )
         if not solution.converged and on_failure == "raise":
             index = np.unravel_index(position, shape) if shape else ()
             place = {str(d): load[d].values[i] if d in load.coords else i for d, i in zip(lead, index, strict=True)}

@@ -4,12 +4,14 @@ from dataclasses import dataclass, field
 
 import numpy as np
 import xarray as xr
+from numpy.typing import NDArray
 
 from massfingerprint.arguments import real_number, whole_number
 from massfingerprint.constants import FRESH_WATER_DENSITY, KILOGRAMS_PER_GIGATONNE
 from massfingerprint.earth.response import coefficient_factors
 from massfingerprint.errors import GridError, InputError
-from massfingerprint.sealevel._equation import Operator
+from massfingerprint.sealevel._equation import Correction, Operator
+from massfingerprint.sealevel._levels import corrections
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import Grid, grid_of
 from massfingerprint.sphere.harmonics import check_finite
@@ -37,6 +39,8 @@ class Prepared:
         m2: 4 pi a^2 times the degree-0 mean of the ocean fraction.
     operator : Operator
         The arrays of the equation.
+    correction : Correction
+        What speeds its solution up.
     """
 
     grid: Grid
@@ -46,6 +50,7 @@ class Prepared:
     water_density: float
     ocean_area: float
     operator: Operator = field(repr=False)
+    correction: Correction = field(repr=False)
 
     @property
     def gigatonnes_per_millimetre(self) -> float:
@@ -100,6 +105,16 @@ def _check_love(love: xr.Dataset, max_degree: int) -> xr.Dataset:
     return table.copy(deep=True)
 
 
+def _check_stable(response: NDArray[np.float64], density: float) -> None:
+    """Refuse water so heavy that its own pull would gather it without bound (the growth of any degree reaches 1)."""
+    growth = density * float(response.max())
+    if not growth < 1.0:
+        limit = density / growth
+        raise InputError(
+            f"water_density: water of {density:g} kg m-3 would gather without bound on this Earth. Use less than {limit:.0f}."
+        )
+
+
 def prepare_solver(
     ocean: xr.DataArray, love: xr.Dataset, *, max_degree: int, rotation: bool = True, water_density: float = 1000.0
 ) -> Prepared:
@@ -143,6 +158,8 @@ def prepare_solver(
     rings = _transform.GaussLegendreRings(max_degree, ocean_degree)
     degree, order = _transform.degrees_and_orders(max_degree)
     response = coefficient_factors(table, "relative_sea_level", degree, order, rotation=rotation)
+    _check_stable(response, density)
     operator = Operator(rings, rings.synthesise(fraction), _transform.resized(fraction, max_degree), response, density)
     area = float(fraction[0].real * np.sqrt(4.0 * np.pi)) * float(love.attrs["radius"]) ** 2
-    return Prepared(grid, table, max_degree, bool(rotation), density, area, operator)
+    correction = corrections(operator, fraction)
+    return Prepared(grid, table, max_degree, bool(rotation), density, area, operator, correction)

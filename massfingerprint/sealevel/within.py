@@ -34,7 +34,7 @@ def response_of_site(prepared: Prepared, lat: float, lon: float, *, tolerance: f
         If the solve misses its tolerance.
     """
     ice = point_mass(prepared, lat, lon)
-    solution = solve(prepared.operator, ice, tolerance=tolerance)
+    solution = solve(prepared.operator, ice, tolerance=tolerance, correction=prepared.correction)
     if not solution.converged:
         raise NotConvergedError(
             f"site at {lat:g}, {lon:g}: residual {solution.residual:.3g}, tolerance {tolerance:g}. Loosen it."

@@ -7,6 +7,7 @@ functions without that phase.  Source: ducc0 documentation; relation of the two 
 
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
+from typing import Any
 
 import ducc0
 import numpy as np
@@ -39,8 +40,8 @@ def degrees_and_orders(max_degree: int) -> tuple[Index, Index]:
     return degree, order
 
 
-def index_of(degree: int, order: int, max_degree: int) -> int:
-    """Position of (degree, order) in a triangle up to ``max_degree``."""
+def index_of(degree: Any, order: Any, max_degree: int) -> Any:
+    """Position of (degree, order), whole numbers or arrays of them, in a triangle up to ``max_degree``."""
     return order * (2 * max_degree + 1 - order) // 2 + degree
 
 
@@ -205,5 +206,5 @@ class GaussLegendreRings:
 def inner_product(first: Complex, second: Complex) -> float:
     """Integral over the unit sphere of the product of two real fields given by coefficients (n,) of one degree."""
     zonal = degree_of_count(first.size) + 1
-    product = first.real * second.real + first.imag * second.imag
-    return float(2.0 * product.sum() - product[:zonal].sum())
+    whole = np.vdot(first, second).real
+    return float(2.0 * whole - np.vdot(first[:zonal], second[:zonal]).real)
