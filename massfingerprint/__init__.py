@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     from massfingerprint.mass.scope import check_scope
     from massfingerprint.options import set_options
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
+    from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
     from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
@@ -35,6 +36,7 @@ __version__ = "0.1.0"
 
 _HOMES = {
     "align": "mass.combine",
+    "apply_kernels": "sealevel.kernels",
     "at_sites": "sealevel.sites",
     "barystatic": "mass.barystatic",
     "check_scope": "mass.scope",
@@ -61,6 +63,7 @@ _HOMES = {
     "sea_level_rates": "sealevel.series",
     "sea_level_series": "sealevel.series",
     "set_options": "options",
+    "site_kernels": "sealevel.kernels",
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
     "sum_sources": "mass.combine",
@@ -69,6 +72,7 @@ _HOMES = {
 
 __all__ = [
     "align",
+    "apply_kernels",
     "at_sites",
     "barystatic",
     "check_scope",
@@ -94,6 +98,7 @@ __all__ = [
     "sea_level_rates",
     "sea_level_series",
     "set_options",
+    "site_kernels",
     "solve_fingerprints",
     "spread_mass",
     "sum_sources",

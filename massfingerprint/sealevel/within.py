@@ -3,45 +3,14 @@
 import numpy as np
 import pandas as pd
 import xarray as xr
-from numpy.typing import NDArray
 
-from massfingerprint.constants import KILOGRAMS_PER_GIGATONNE
-from massfingerprint.errors import InputError, NotConvergedError
-from massfingerprint.sealevel._equation import solve
+from massfingerprint.errors import InputError
+from massfingerprint.sealevel.kernels import point_mass, sea_level_of
 from massfingerprint.sealevel.sites import taper
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import grid_of
 from massfingerprint.sphere.points import check_sites
-
-Complex = NDArray[np.complex128]
-
-
-def point_mass(prepared: Prepared, lat: float, lon: float) -> Complex:
-    """Coefficients (n,) in kg m-2 of one gigatonne added at a point, up to the degree of the solution."""
-    unit = _transform.point_coefficients(np.deg2rad(90.0 - lat), np.deg2rad(lon % 360.0), prepared.max_degree)
-    return unit * (KILOGRAMS_PER_GIGATONNE.value / float(prepared.love.attrs["radius"]) ** 2)
-
-
-def response_of_site(prepared: Prepared, lat: float, lon: float, *, tolerance: float) -> Complex:
-    """Relative sea level at a site per gigatonne added anywhere, as coefficients (n,) in m over the place of the mass.
-
-    By reciprocity it is the pattern of one gigatonne added at the site.
-
-    Raises
-    ------
-    NotConvergedError
-        If the solve misses its tolerance.
-    """
-    ice = point_mass(prepared, lat, lon)
-    solution = solve(prepared.operator, ice, tolerance=tolerance, correction=prepared.correction)
-    if not solution.converged:
-        raise NotConvergedError(
-            f"site at {lat:g}, {lon:g}: residual {solution.residual:.3g}, tolerance {tolerance:g}. Loosen it."
-        )
-    out = prepared.operator.response * solution.load
-    out[0] += solution.uniform * np.sqrt(4.0 * np.pi)
-    return out
 
 
 def range_within(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, *, tolerance: float = 1e-6) -> xr.Dataset:
@@ -81,7 +50,8 @@ def range_within(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, *,
     smooth = taper(degree, prepared.max_degree)
     values = np.empty((2, carried.shape[0], len(table)))
     for column, (lat, lon) in enumerate(table[["lat", "lon"]].to_numpy()):
-        here = smooth * response_of_site(prepared, float(lat), float(lon), tolerance=tolerance)
+        point = point_mass(prepared, float(lat), float(lon))
+        here = smooth * sea_level_of(prepared, point, tolerance=tolerance, label=f"site at {lat:g}, {lon:g}")
         field = grid.from_rings(_transform.synthesise(here, (grid.nlat, grid.nlon), grid.first_azimuth)) * 1e3
         for row, cells in enumerate(carried):
             values[:, row, column] = field[cells].min(), field[cells].max()
