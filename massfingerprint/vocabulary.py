@@ -154,3 +154,14 @@ def require(attrs: Mapping[Any, Any], accepted: tuple[str, ...], *, argument: st
     if not matches:
         raise UnitsError(f"{argument}: units must be {allowed}, got {given!r}. Set attrs['units'] or convert first.")
     return matches[0]
+
+
+# words of built-in names that are names themselves
+_PROPER = {"antarctica", "peninsula", "amundsen", "bellingshausen", "marie", "byrd", "dronning", "maud", "queen", "mary", "siple",
+           "ronne", "filchner", "enderby", "amery", "wilkes", "george", "v", "graham", "palmer"}  # fmt: skip
+
+
+def readable(source: str) -> str:
+    """Name of a mass source for people: ``west_antarctica_amundsen`` as ``West Antarctica Amundsen``; own letters are kept."""
+    words = source.replace("_", " ").split()
+    return " ".join(word[:1].upper() + word[1:] if n == 0 or word in _PROPER else word for n, word in enumerate(words))

@@ -20,6 +20,7 @@ INK, QUIET, FAINT, PAPER = "#222222", "#6b6b6b", "#d5d3cf", "#ffffff"
 LAND, SHELF, SEA = "#ece9e2", "#dde6ea", "#ffffff"
 COLUMN, PAGE = 3.5, 7.2  # inches: one column and the full width of a page
 TITLE_SIZE, TEXT_SIZE, SMALL_SIZE = 10.0, 8.0, 6.5
+_CHARACTERS = 20.5  # of small print an inch
 
 _LESS = ("#704000", "#925f18", "#b28146", "#cda67a", "#e3cdb5")
 _MORE = ("#b3d9db", "#72bdc0", "#2d9ea3", "#007d84", "#005d63")
@@ -51,7 +52,7 @@ _STYLE: dict[Any, Any] = {
     "hatch.linewidth": 0.4,
     "svg.fonttype": "none",
     "svg.hashsalt": "massfingerprint",
-    "pdf.fonttype": 42,
+    "pdf.fonttype": 3,
 }
 FORMATS = ("png", "pdf", "svg")
 
@@ -80,19 +81,23 @@ def source_colours(sources: Sequence[str]) -> dict[str, str]:
     return out
 
 
-def readable(source: str) -> str:
-    """Name of a mass source for people: ``greenland_northwest`` as ``Greenland northwest``; own names as they are."""
-    words = source.replace("_", " ").strip()
-    return words[:1].upper() + words[1:]
+def caption(figure: Figure, text: str, *, left: float = 0.02) -> None:
+    """Small print at the foot of a figure, wrapped to its width; ``left`` is the margin as a share of the width."""
+    width = float(figure.get_figwidth()) * (1.0 - 2.0 * left)
+    lines = "\n".join(textwrap.wrap(text, int(_CHARACTERS * width)))
+    figure.text(
+        left,
+        0.05 / float(figure.get_figheight()),
+        lines,
+        fontsize=SMALL_SIZE,
+        color=QUIET,
+        va="bottom",
+        ha="left",
+        linespacing=1.25,
+    )
 
 
-def caption(figure: Figure, text: str, *, characters: int) -> None:
-    """Small print at the foot of a figure, wrapped to so many characters a line."""
-    lines = "\n".join(textwrap.wrap(text, characters))
-    figure.text(0.02, 0.012, lines, fontsize=SMALL_SIZE, color=QUIET, va="bottom", ha="left", linespacing=1.25)
-
-
-def file_content(figure: Figure, kind: str, *, dpi: int = 200) -> bytes:
+def file_content(figure: Figure, kind: str, *, dpi: int = 150) -> bytes:
     """Bytes of a figure as ``png``, ``pdf`` or ``svg``; the same figure gives the same bytes, no date inside.
 
     Parameters

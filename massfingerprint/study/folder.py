@@ -33,7 +33,7 @@ from massfingerprint.study.tables import (
 
 PATTERNS, SITES, LEDGER = "patterns.nc", "sites.nc", "ledger.nc"
 SUMMARY_TEXT, SUMMARY_JSON, PROVENANCE, GUIDE = "summary.txt", "summary.json", "provenance.json", "README.txt"
-TABLES = "tables"
+TABLES, FIGURES = "tables", "figures"
 NUMBERS = ("value", "sigma", "half_width", "lowest", "highest", "truncation", "distance_to_load", "resolved")
 TABLE_NAMES = ("mass", "per_gigatonne", "site_rates", "site_levels", "site_rates_shown")
 
@@ -76,6 +76,11 @@ def write_study(
         tables = study_tables(study)
         with clock.stage("files"):
             _write_files(study, tables, fresh, progress)
+        with clock.stage("figures"):
+            if recipe.output.maps:
+                from massfingerprint.study.pictures import draw  # noqa: PLC0415  plotting only where it is asked for
+
+                draw(study, tables, fresh / FIGURES, progress=progress)
     return dataclasses.replace(study, folder=target)
 
 

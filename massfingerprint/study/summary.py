@@ -11,6 +11,7 @@ from massfingerprint.mass.summary import TOTAL, sentence
 from massfingerprint.sealevel.sites import RESOLVED_BEYOND
 from massfingerprint.study.metadata import CAUTION, LEFT_OUT, UNCERTAINTY
 from massfingerprint.study.run import Study
+from massfingerprint.vocabulary import readable
 
 _WIDTH = 110
 
@@ -47,7 +48,7 @@ def site_sentence(tables: dict[str, pd.DataFrame], site: str, window: str, span:
     return (
         f"At {site}, the mass sources together {verb} relative sea level by {abs(whole['value']):.2f} +- "
         f"{whole['half_width']:.2f} mm a year ({interval}) from {span[0]} to {span[1]}, {ratio}; the largest part is "
-        f"{largest['source']} with {largest['value']:+.2f}."
+        f"{readable(str(largest['source']))} with {largest['value']:+.2f}."
     )
 
 

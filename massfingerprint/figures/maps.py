@@ -1,0 +1,211 @@
+"""Maps of a pattern as a multiple of the global mean: the world, and a pole where an ice sheet is the source."""
+
+from collections.abc import Sequence
+from functools import cache
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+from matplotlib.axes import Axes
+from matplotlib.cm import ScalarMappable
+from matplotlib.colors import BoundaryNorm
+from matplotlib.figure import Figure
+from matplotlib.patches import Patch, PathPatch
+from matplotlib.patheffects import withStroke
+from matplotlib.transforms import Bbox
+from numpy.typing import NDArray
+
+from massfingerprint.arguments import one_of
+from massfingerprint.bundled import open_bundled
+from massfingerprint.errors import GridError, InputError
+from massfingerprint.figures import _projected, look
+from massfingerprint.figures._labels import place_labels
+
+Array = NDArray[np.float64]
+STEPS = np.round(np.arange(0.4, 1.65, 0.1), 1)  # of the colours, as far below 1 as above
+CONTOURS = (0.0, 0.5, 0.8, 1.0, 1.1, 1.2, 1.3)
+SCALE = "relative sea level as a multiple of the global mean [1]"
+FALLS = "hatched: relative sea level falls"
+_ROWS = {"world": 180, "north": 360, "south": 360}  # rings of cells drawn, pole to pole
+_POLAR = 1.75  # inches across a polar panel
+_SEA = 0.5  # share of sea above which a cell gets contours
+
+
+def pattern_map(
+    ratio: xr.DataArray,
+    *,
+    title: str,
+    caption: str,
+    sites: pd.DataFrame | None = None,
+    poles: Sequence[str] = (),
+) -> Figure:
+    """Draw relative sea level divided by the global mean.
+
+    Parameters
+    ----------
+    ratio : DataArray (lat, lon)
+        Dimensionless, on a regular global cell-centred grid, either longitude convention, either orientation.
+    title, caption : str
+        Head and small print.
+    sites : DataFrame, optional
+        Columns site, lat, lon: marked and named.
+    poles : sequence of str
+        ``north``, ``south``: panels of the polar cap below the world.
+
+    Returns
+    -------
+    Figure
+        Page width; draw and save it within ``look.style()``.
+
+    Raises
+    ------
+    GridError, InputError
+        If the field is not global and regular, a column or a pole is not known.
+    """
+    for pole in poles:
+        one_of(pole, ("north", "south"), argument="poles", kind="pole")
+    values = _ordered(ratio)
+    marked = _sites(sites)
+    low = (1.45, 2.0, 2.45)[len(poles)]  # inches below the world
+    height = low + 3.45 + 0.4
+    figure = look.new_figure(look.PAGE, height)
+    figure.text(0.02, 1.0 - 0.12 / height, title, fontsize=look.TITLE_SIZE, va="top", weight="bold")
+    world = figure.add_axes((0.01, low / height, 0.98, 3.45 / height))
+    _panel(world, "world", values, marked)
+    for number, pole in enumerate(reversed(poles)):
+        left = 1.0 - (_POLAR * (number + 1) + 0.1) / look.PAGE
+        panel = figure.add_axes((left, 0.55 / height, _POLAR / look.PAGE, _POLAR / height))
+        _panel(panel, pole, values, marked.iloc[:0])  # sites stand on the world map alone
+    _colour_bar(figure, height, (0.62, 0.62, 0.42)[len(poles)], bool((values < 0.0).any()))
+    look.caption(figure, caption)
+    return figure
+
+
+def _ordered(ratio: xr.DataArray) -> Array:
+    """Values (nlat, nlon) from south to north and from longitude 0 eastward."""
+    if not isinstance(ratio, xr.DataArray) or set(ratio.dims) != {"lat", "lon"}:
+        found = ratio.dims if isinstance(ratio, xr.DataArray) else type(ratio).__name__
+        raise GridError(f"ratio: must be a DataArray (lat, lon), got {found}. Select one field first.")
+    field = ratio.assign_coords(lon=ratio["lon"] % 360.0).sortby(["lat", "lon"]).transpose("lat", "lon")
+    steps = np.diff(field["lon"].values), np.diff(field["lat"].values)
+    even = all(step.size and np.allclose(step, step[0], rtol=1e-4) for step in steps)
+    if not even or abs(field["lat"].values[0] + 90.0 - steps[1][0] / 2.0) > 1e-3:
+        raise GridError("ratio: must lie on a regular global cell-centred grid. Use solve_fingerprints' own grid.")
+    start = field["lon"].values[0]
+    shift = round((start - steps[0][0] / 2.0) / steps[0][0])
+    values = np.roll(np.asarray(field.values, dtype=np.float64), shift, axis=1)
+    if not np.isfinite(values).all():
+        raise GridError("ratio: holds values that are not finite. Fields are defined everywhere, land included.")
+    return values
+
+
+def _sites(sites: pd.DataFrame | None) -> pd.DataFrame:
+    if sites is None:
+        return pd.DataFrame({"site": [], "lat": [], "lon": []})
+    missing = [name for name in ("site", "lat", "lon") if name not in sites]
+    if missing:
+        raise InputError(f"sites: lacks the column {missing[0]}. Name the columns site, lat and lon.")
+    return sites
+
+
+def _reduced(values: Array, rows: int) -> Array:
+    """Block means on about so many rings."""
+    factor = max(1, values.shape[0] // rows)
+    while values.shape[0] % factor or values.shape[1] % factor:
+        factor -= 1
+    shape = (values.shape[0] // factor, factor, values.shape[1] // factor, factor)
+    return values.reshape(shape).mean(axis=(1, 3))
+
+
+def _cells(name: str, values: Array) -> Array:
+    """Cells of a view, from its south to its north and from its first longitude eastward."""
+    view, cells = _projected.VIEWS[name], _reduced(values, _ROWS[name])
+    step = 180.0 / cells.shape[0]
+    rows = slice(round((view.south + 90.0) / step), round((view.north + 90.0) / step))
+    return np.roll(cells[rows], -round(view.first_longitude / (360.0 / cells.shape[1])), axis=1)
+
+
+def _panel(axes: Axes, name: str, values: Array, sites: pd.DataFrame) -> None:
+    """One view: field, hatching, contours with labels, land, outline, sites."""
+    cells, outline = _cells(name, values), _projected.boundary(name)
+    axes.set_aspect("equal")
+    axes.set_axis_off()
+    x, y = np.asarray(outline.vertices).T
+    axes.set_xlim(*_padded(x))
+    axes.set_ylim(*_padded(y))
+    edge = PathPatch(outline, facecolor="none", edgecolor=look.QUIET, linewidth=0.6, zorder=5)
+    axes.add_artist(edge)  # add_patch would measure it, slowly
+    nodes, field = _projected.nodes(name, *cells.shape), _projected.on_nodes(cells)
+    fill = axes.contourf(*nodes, field, levels=STEPS, cmap=look.RATIO_COLOURS, norm=_norm(), extend="both", zorder=1)
+    fill.set(edgecolor="face", linewidth=0.2, rasterized=True)
+    if (cells < 0.0).any():
+        hatch = axes.contourf(*nodes, field, levels=[-1e9, 0.0], colors="none", hatches=["////"], zorder=2)
+        hatch.set(edgecolor=look.INK, linewidth=0.0, gid="falls")
+        hatch.set_clip_path(edge)
+    labels = _contours(axes, name, nodes, cells)
+    ground = PathPatch(_projected.land(name), facecolor=look.LAND, edgecolor=look.QUIET, linewidth=0.25, zorder=4)
+    axes.add_artist(ground)
+    for artist in (fill, ground):
+        artist.set_clip_path(edge)
+    if len(sites):
+        points = np.column_stack(_projected.places(name, sites["lon"].to_numpy(), sites["lat"].to_numpy()))
+        missed = place_labels(axes, [str(s) for s in sites["site"]], points, taken=labels)
+        if missed:
+            words = f"(+{missed} more sites)"
+            axes.text(1.0, 0.0, words, transform=axes.transAxes, fontsize=look.SMALL_SIZE, ha="right")
+
+
+def _padded(values: Array) -> tuple[float, float]:
+    room = 0.004 * (values.max() - values.min())
+    return float(values.min() - room), float(values.max() + room)
+
+
+def _contours(axes: Axes, name: str, nodes: tuple[Array, Array], cells: Array) -> list[Bbox]:
+    """Lines at sea with labels; returns the display boxes of the labels."""
+    sea = _projected.on_nodes(_like(_cells(name, _sea()), cells.shape))
+    wet = np.ma.masked_where(sea < _SEA, _projected.on_nodes(cells))
+    if wet.count() == 0 or wet.min() == wet.max():
+        return []
+    lines = axes.contour(*nodes, wet, levels=list(CONTOURS), colors=look.INK, linewidths=0.5, zorder=3)
+    texts = axes.clabel(lines, fmt="%.1f", fontsize=look.SMALL_SIZE - 0.5, inline=True, inline_spacing=2) or []
+    outline = axes.transData.transform_path(_projected.boundary(name))
+    kept: list[Bbox] = []
+    for text in texts:
+        text.set_path_effects([withStroke(linewidth=1.2, foreground=look.PAPER)])
+        box = text.get_window_extent().padded(2.0)
+        if outline.contains_points(box.corners()).all() and not any(box.overlaps(other) for other in kept):
+            kept.append(box)
+        else:
+            text.remove()
+    return kept
+
+
+def _like(cells: Array, shape: tuple[int, ...]) -> Array:
+    """Cells of the nearest place on a grid of another size."""
+    rows, columns = ((np.arange(n) + 0.5) * have / n for n, have in zip(shape, cells.shape, strict=True))
+    return cells[np.ix_(rows.astype(int), columns.astype(int))]
+
+
+def _norm() -> BoundaryNorm:
+    return BoundaryNorm(STEPS, look.RATIO_COLOURS.N, extend="both")
+
+
+@cache
+def _sea() -> Array:
+    """Ocean fraction (720, 1440) from south to north and from longitude 0 eastward."""
+    return _ordered(open_bundled("ocean_fraction_0.25deg.nc")["ocean_fraction"])
+
+
+def _colour_bar(figure: Figure, height: float, width: float, falls: bool) -> None:
+    bar = figure.add_axes((0.04, 0.82 / height, width, 0.11 / height))
+    shown = figure.colorbar(
+        ScalarMappable(_norm(), look.RATIO_COLOURS), cax=bar, orientation="horizontal", extend="both"
+    )
+    shown.set_ticks([0.4, 0.6, 0.8, 1.0, 1.2, 1.4, 1.6])
+    shown.outline.set_linewidth(0.4)
+    bar.tick_params(length=2.0, labelsize=look.TEXT_SIZE)
+    bar.set_title(SCALE, fontsize=look.TEXT_SIZE, loc="left", pad=3.0)
+    if falls:
+        patch = Patch(facecolor="none", edgecolor=look.INK, hatch="//////", linewidth=0.4, label=FALLS)
+        figure.legend(handles=[patch], loc="lower left", bbox_to_anchor=(0.03, 1.2 / height), fontsize=look.TEXT_SIZE,
+                      borderaxespad=0.0, handlelength=1.6)  # fmt: skip
