@@ -31,7 +31,7 @@ def test_two_commands_of_one_line_each():
     commands = blocks("bash")
     assert len(commands) == 2
     assert all(command.count("\n") == 1 and command.startswith("python3 -m venv .venv && ") for command in commands)
-    assert "massfingerprint sites" in commands[0]
+    assert "massfingerprint study data_small/demo_study.toml" in commands[0]
     assert commands[1].rstrip().endswith("pytest")
 
 

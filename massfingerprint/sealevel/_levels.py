@@ -18,7 +18,7 @@ from massfingerprint.sphere import _transform
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
-DIRECT_DEGREE, MIDDLE_DEGREE = 24, 160
+DIRECT_DEGREE, MIDDLE_DEGREE = 16, 160
 _SWEEPS = 2  # of the middle level
 _WET = 0.6  # between 0 on land and 1 at sea: what a round is taken to return of a high degree, in units of rho_w T
 

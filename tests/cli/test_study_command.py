@@ -43,8 +43,8 @@ def test_check_says_what_will_be_done_and_does_nothing(study_file, capsys):
     out = capsys.readouterr().out
     for words in (
         "3 sources, 11 times",
-        "90 x 180 cells",
-        "degree 32",
+        "60 x 120 cells",
+        "degree 16",
         "Memory: about",
         "Time: about",
         "nothing was run",
@@ -54,7 +54,7 @@ def test_check_says_what_will_be_done_and_does_nothing(study_file, capsys):
 
 
 def test_problems_one_a_line_and_exit_1(tmp_path, capsys):
-    path = write_inputs(tmp_path, STUDY.replace("spacing = 2.0", "spacin = 2.0").replace('"mass.csv"', '"nowhere.csv"'))
+    path = write_inputs(tmp_path, STUDY.replace("spacing = 3.0", "spacin = 3.0").replace('"mass.csv"', '"nowhere.csv"'))
     for extra in ([], ["--check"]):
         assert main(["study", str(path), *extra]) == 1
         out, err = capsys.readouterr()

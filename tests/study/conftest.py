@@ -18,8 +18,8 @@ file = "mass.csv"
 builtin = ["greenland", "west_antarctica", "glaciers_01"]
 
 [grid]
-spacing = 2.0
-max_degree = 32
+spacing = 3.0
+max_degree = 16
 
 [sites]
 file = "sites.csv"

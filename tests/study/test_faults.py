@@ -58,7 +58,7 @@ def test_killed_at_thirty_random_moments(tmp_path):
 @pytest.mark.slow
 def test_an_interrupt_says_what_is_kept(tmp_path):
     path = write_inputs(
-        tmp_path / "s", STUDY.replace("spacing = 2.0", "spacing = 0.5").replace("max_degree = 32", "max_degree = 256")
+        tmp_path / "s", STUDY.replace("spacing = 3.0", "spacing = 0.5").replace("max_degree = 16", "max_degree = 256")
     )
     kept = path.parent / "massfingerprint-cache"
     process = subprocess.Popen([*RUN, str(path)], stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
@@ -75,7 +75,7 @@ def test_an_interrupt_says_what_is_kept(tmp_path):
 @pytest.mark.slow
 def test_the_second_of_two_runs_into_one_folder_is_refused(tmp_path, capsys):
     path = write_inputs(
-        tmp_path / "s", STUDY.replace("spacing = 2.0", "spacing = 0.5").replace("max_degree = 32", "max_degree = 256")
+        tmp_path / "s", STUDY.replace("spacing = 3.0", "spacing = 0.5").replace("max_degree = 16", "max_degree = 256")
     )
     process = subprocess.Popen([*RUN, str(path)], stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
     wait_for(lambda: list(path.parent.glob(".out.new-*")), process)
