@@ -70,11 +70,11 @@ def _site_block(study: Study, tables: dict[str, pd.DataFrame], window: str) -> s
         own = _of(tables["site_rates"], field="relative_sea_level", window=window, site=row["site"])
         parts = own[own["source"] != TOTAL]
         order = np.argsort(-np.abs(parts["value"].to_numpy()))[:3]
-        most = ", ".join(f"{parts['source'].iloc[i]} {parts['value'].iloc[i]:+.2f}" for i in order)
-        total = f"{row['total [mm yr-1]']:+.2f} +- {row['half-width [mm yr-1]']:.2f}"
+        most = ", ".join(f"{parts['source'].iloc[i]} {parts['value'].iloc[i]:+.3f}" for i in order)
+        total = f"{row['total [mm yr-1]']:+.3f} +- {row['half-width [mm yr-1]']:.3f}"
         ratio = f"{row['ratio to global mean [1]']:.2f}"
         prefix, site, source = str(row["total_id"]).rsplit(":", maxsplit=2)
-        rows.append([row["site"], total, ratio, f"{row['land up [mm yr-1]']:+.2f}", most, f"{site}:{source}"])
+        rows.append([row["site"], total, ratio, f"{row['land up [mm yr-1]']:+.3f}", most, f"{site}:{source}"])
     heads = ["site", f"mm/yr ({study.recipe.output.interval})", "x mean", "land up", "largest parts, mm/yr", "id"]
     align = ("left", "right", "right", "right", "left", "left")
     table = tabulate(rows, headers=heads, tablefmt="simple", colalign=align, disable_numparse=True)

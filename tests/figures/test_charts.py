@@ -9,7 +9,7 @@ from massfingerprint.figures import bars, curves, look, overview
 from tests.figures.structure import all_words, outside, overlaps
 
 NAMES = ["greenland_northwest", "greenland_southeast", "west_antarctica_amundsen", "antarctic_peninsula", "east_antarctica",
-         "glaciers_01", "glaciers_03", "glaciers_06", "glaciers_13", "glaciers_17", "Vatnajökull $own$", "my own basin"]  # fmt: skip
+         "glaciers_01", "glaciers_03", "glaciers_06", "glaciers_13", "glaciers_17", "Vatnajökull $own$", "own basin"]  # fmt: skip
 
 
 @pytest.fixture
