@@ -18,6 +18,7 @@ CUT = 25.0  # east: the world map is cut through Africa and Europe, no ocean is
 _EDGE = 1e-6  # degrees inside the cut, where a longitude has one place only
 _SEAM = 2e3  # metres: slits between pieces that the date line parts are closed
 _CAP = 50.0  # latitude at which the polar panels end
+_FINEST = 6e3  # metres: a tenth of a point or less on the page, finer detail of coasts only costs time
 
 
 @dataclass(frozen=True)
@@ -110,7 +111,7 @@ def land(name: str) -> Path:
             table = table.difference(_shelves(0.03))
         flat = [_through(name, _filled(piece)) for piece in table if not piece.is_empty]
     whole = shapely.union_all([shapely.make_valid(shape) for shape in flat])
-    return _path(whole.buffer(_SEAM).buffer(-_SEAM))
+    return _path(whole.buffer(_SEAM).buffer(-_SEAM).simplify(_FINEST))
 
 
 def _shelves(tolerance: float) -> BaseGeometry:

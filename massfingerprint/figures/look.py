@@ -21,6 +21,7 @@ LAND, SHELF, SEA = "#ece9e2", "#dde6ea", "#ffffff"
 COLUMN, PAGE = 3.5, 7.2  # inches: one column and the full width of a page
 TITLE_SIZE, TEXT_SIZE, SMALL_SIZE = 10.0, 8.0, 6.5
 _CHARACTERS = 20.5  # of small print an inch
+_FOOT, _LINE = 0.05, 1.25  # of small print: inches from the edge, distance of lines
 
 _LESS = ("#704000", "#925f18", "#b28146", "#cda67a", "#e3cdb5")
 _MORE = ("#b3d9db", "#72bdc0", "#2d9ea3", "#007d84", "#005d63")
@@ -53,6 +54,7 @@ _STYLE: dict[Any, Any] = {
     "svg.fonttype": "none",
     "svg.hashsalt": "massfingerprint",
     "pdf.fonttype": 3,
+    "pdf.compression": 2,  # three times as fast as the usual 6, files a few per cent larger
 }
 FORMATS = ("png", "pdf", "svg")
 
@@ -83,18 +85,25 @@ def source_colours(sources: Sequence[str]) -> dict[str, str]:
 
 def caption(figure: Figure, text: str, *, left: float = 0.02) -> None:
     """Small print at the foot of a figure, wrapped to its width; ``left`` is the margin as a share of the width."""
-    width = float(figure.get_figwidth()) * (1.0 - 2.0 * left)
-    lines = "\n".join(textwrap.wrap(text, int(_CHARACTERS * width)))
     figure.text(
         left,
-        0.05 / float(figure.get_figheight()),
-        lines,
+        _FOOT / float(figure.get_figheight()),
+        "\n".join(_wrapped(text, float(figure.get_figwidth()), left)),
         fontsize=SMALL_SIZE,
         color=QUIET,
         va="bottom",
         ha="left",
-        linespacing=1.25,
+        linespacing=_LINE,
     )
+
+
+def caption_height(text: str, *, width: float = PAGE, left: float = 0.02) -> float:
+    """Inches from the foot of a figure of a width to the top of its caption."""
+    return _FOOT + len(_wrapped(text, width, left)) * _LINE * SMALL_SIZE / 72.0
+
+
+def _wrapped(text: str, width: float, left: float) -> list[str]:
+    return textwrap.wrap(text, int(_CHARACTERS * width * (1.0 - 2.0 * left)))
 
 
 def file_content(figure: Figure, kind: str, *, dpi: int = 150) -> bytes:
@@ -112,5 +121,6 @@ def file_content(figure: Figure, kind: str, *, dpi: int = 150) -> bytes:
     nothing = {"png": {"Software": None}, "pdf": {"CreationDate": None, "Creator": None}, "svg": {"Date": None}}
     buffer = io.BytesIO()
     with style():
-        figure.savefig(buffer, format=kind, dpi=dpi, metadata=nothing[kind])
+        more: dict[str, Any] = {"pil_kwargs": {"compress_level": 3}} if kind == "png" else {}  # as for PDF
+        figure.savefig(buffer, format=kind, dpi=dpi, metadata=nothing[kind], **more)
     return buffer.getvalue()

@@ -1,7 +1,9 @@
 """Maps of a pattern as a multiple of the global mean: the world, and a pole where an ice sheet is the source."""
 
+import textwrap
 from collections.abc import Sequence
 from functools import cache
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -27,7 +29,10 @@ CONTOURS = (0.0, 0.5, 0.8, 1.0, 1.1, 1.2, 1.3)
 SCALE = "relative sea level as a multiple of the global mean [1]"
 FALLS = "hatched: relative sea level falls"
 _ROWS = {"world": 180, "north": 360, "south": 360}  # rings of cells drawn, pole to pole
-_POLAR = 1.75  # inches across a polar panel
+_WORLD, _POLAR = 3.45, 1.75  # inches: height of the world, across a polar panel
+_ABOVE_FOOT = (0.9, 1.7, 1.9)  # inches between small print and world, with so many polar panels
+_PALE = "#e3cdb5"  # of the hatching, which always lies on the darkest ochre
+_TITLE_WIDTH, _TITLE_LINE = 80, 0.17  # characters, inches
 _SEA = 0.5  # share of sea above which a cell gets contours
 
 
@@ -62,23 +67,34 @@ def pattern_map(
     GridError, InputError
         If the field is not global and regular, a column or a pole is not known.
     """
-    for pole in poles:
-        one_of(pole, ("north", "south"), argument="poles", kind="pole")
-    values = _ordered(ratio)
-    marked = _sites(sites)
-    low = (1.45, 2.0, 2.45)[len(poles)]  # inches below the world
-    height = low + 3.45 + 0.4
+    shown = [pole for pole in ("north", "south") if pole in _poles(poles)]
+    values, marked = _ordered(ratio), _sites(sites)
+    head = textwrap.wrap(title, _TITLE_WIDTH) or [""]
+    foot = look.caption_height(caption) + 0.12
+    low = foot + _ABOVE_FOOT[len(shown)]
+    height = low + _WORLD + 0.23 + _TITLE_LINE * len(head)
     figure = look.new_figure(look.PAGE, height)
-    figure.text(0.02, 1.0 - 0.12 / height, title, fontsize=look.TITLE_SIZE, va="top", weight="bold")
-    world = figure.add_axes((0.01, low / height, 0.98, 3.45 / height))
-    _panel(world, "world", values, marked)
-    for number, pole in enumerate(reversed(poles)):
+    figure.text(0.02, 1.0 - 0.12 / height, "\n".join(head), fontsize=look.TITLE_SIZE, va="top", weight="bold")
+    world = figure.add_axes((0.01, low / height, 0.98, _WORLD / height))
+    panels = {"world": world}
+    for number, pole in enumerate(reversed(shown)):
         left = 1.0 - (_POLAR * (number + 1) + 0.1) / look.PAGE
-        panel = figure.add_axes((left, 0.55 / height, _POLAR / look.PAGE, _POLAR / height))
-        _panel(panel, pole, values, marked.iloc[:0])  # sites stand on the world map alone
-    _colour_bar(figure, height, (0.62, 0.62, 0.42)[len(poles)], bool((values < 0.0).any()))
+        panels[pole] = figure.add_axes((left, foot / height, _POLAR / look.PAGE, _POLAR / height))
+    for name, axes in panels.items():
+        _frame(axes, name)
+    names = _name_sites(world, marked, figure.axes[1:])  # sites stand on the world map alone
+    falls = [_fill(axes, name, values, names if axes is world else []) for name, axes in panels.items()]
+    _colour_bar(figure, foot, (0.62, 0.62, 0.42)[len(shown)], any(falls))
     look.caption(figure, caption)
     return figure
+
+
+def _poles(poles: Sequence[str]) -> Sequence[str]:
+    if isinstance(poles, str):
+        raise InputError(f"poles: must be a list of poles, got the text {poles!r}. Write ({poles!r},).")
+    for pole in poles:
+        one_of(pole, ("north", "south"), argument="poles", kind="pole")
+    return poles
 
 
 def _ordered(ratio: xr.DataArray) -> Array:
@@ -125,34 +141,57 @@ def _cells(name: str, values: Array) -> Array:
     return np.roll(cells[rows], -round(view.first_longitude / (360.0 / cells.shape[1])), axis=1)
 
 
-def _panel(axes: Axes, name: str, values: Array, sites: pd.DataFrame) -> None:
-    """One view: field, hatching, contours with labels, land, outline, sites."""
-    cells, outline = _cells(name, values), _projected.boundary(name)
+def _frame(axes: Axes, name: str) -> None:
+    """Limits of a view."""
     axes.set_aspect("equal")
     axes.set_axis_off()
-    x, y = np.asarray(outline.vertices).T
+    x, y = np.asarray(_projected.boundary(name).vertices).T
     axes.set_xlim(*_padded(x))
     axes.set_ylim(*_padded(y))
-    edge = PathPatch(outline, facecolor="none", edgecolor=look.QUIET, linewidth=0.6, zorder=5)
+    axes.apply_aspect()  # places in pixels are asked for before anything is drawn
+
+
+def _fill(axes: Axes, name: str, values: Array, names: Sequence[Bbox]) -> bool:
+    """Field, hatching, contours clear of the names, land, outline; returns whether the sea falls in this view."""
+    cells = _cells(name, values)
+    wet = _like(_cells(name, _sea()), cells.shape) >= _SEA
+    edge = PathPatch(_projected.boundary(name), facecolor="none", edgecolor=look.QUIET, linewidth=0.6, zorder=5)
     axes.add_artist(edge)  # add_patch would measure it, slowly
     nodes, field = _projected.nodes(name, *cells.shape), _projected.on_nodes(cells)
     fill = axes.contourf(*nodes, field, levels=STEPS, cmap=look.RATIO_COLOURS, norm=_norm(), extend="both", zorder=1)
     fill.set(edgecolor="face", linewidth=0.2, rasterized=True)
-    if (cells < 0.0).any():
+    falls = bool((cells[wet] < 0.0).any())
+    if falls:
         hatch = axes.contourf(*nodes, field, levels=[-1e9, 0.0], colors="none", hatches=["////"], zorder=2)
-        hatch.set(edgecolor=look.INK, linewidth=0.0, gid="falls")
+        hatch.set(edgecolor=_PALE, linewidth=0.0, gid="falls")
         hatch.set_clip_path(edge)
-    labels = _contours(axes, name, nodes, cells)
+    dry = _projected.on_nodes(wet.astype(float)) < _SEA
+    _contours(axes, name, np.ma.masked_where(dry, _projected.on_nodes(_calmed(cells))), names)
     ground = PathPatch(_projected.land(name), facecolor=look.LAND, edgecolor=look.QUIET, linewidth=0.25, zorder=4)
     axes.add_artist(ground)
     for artist in (fill, ground):
         artist.set_clip_path(edge)
-    if len(sites):
-        points = np.column_stack(_projected.places(name, sites["lon"].to_numpy(), sites["lat"].to_numpy()))
-        missed = place_labels(axes, [str(s) for s in sites["site"]], points, taken=labels)
-        if missed:
-            words = f"(+{missed} more sites)"
-            axes.text(1.0, 0.0, words, transform=axes.transAxes, fontsize=look.SMALL_SIZE, ha="right")
+    return falls
+
+
+def _calmed(cells: Array) -> Array:
+    """Means over neighbours weighted 1 2 1: a line does not curl where the field ripples with its highest degrees."""
+    wide = np.pad(np.pad(cells, ((1, 1), (0, 0)), mode="edge"), ((0, 0), (1, 1)), mode="wrap")
+    rows = 0.25 * (wide[:-2] + wide[2:]) + 0.5 * wide[1:-1]
+    return np.asarray(0.25 * (rows[:, :-2] + rows[:, 2:]) + 0.5 * rows[:, 1:-1])
+
+
+def _name_sites(axes: Axes, sites: pd.DataFrame, beside: Sequence[Axes]) -> list[Bbox]:
+    """Mark and name sites, clear of other panels and of the words that count the rest; boxes of the names and markers."""
+    if not len(sites):
+        return []
+    points = np.column_stack(_projected.places("world", sites["lon"].to_numpy(), sites["lat"].to_numpy()))
+    rest = axes.text(0.0, 0.0, "(+000 more sites)", transform=axes.transAxes, fontsize=look.SMALL_SIZE)
+    taken = [rest.get_window_extent(), *(panel.bbox for panel in beside)]
+    names = place_labels(axes, [str(site) for site in sites["site"]], points, taken=taken)
+    rest.set_text(f"(+{len(sites) - len(names)} more sites)")
+    rest.set_visible(len(names) < len(sites))
+    return [*names, *(Bbox([spot, spot]).padded(3.0) for spot in axes.transData.transform(points))]
 
 
 def _padded(values: Array) -> tuple[float, float]:
@@ -160,24 +199,26 @@ def _padded(values: Array) -> tuple[float, float]:
     return float(values.min() - room), float(values.max() + room)
 
 
-def _contours(axes: Axes, name: str, nodes: tuple[Array, Array], cells: Array) -> list[Bbox]:
-    """Lines at sea with labels; returns the display boxes of the labels."""
-    sea = _projected.on_nodes(_like(_cells(name, _sea()), cells.shape))
-    wet = np.ma.masked_where(sea < _SEA, _projected.on_nodes(cells))
+def _contours(axes: Axes, name: str, wet: "np.ma.MaskedArray[Any, Any]", names: Sequence[Bbox]) -> None:
+    """Lines at sea; a label stays if it is inside the view and free, and off land where its level has one that is."""
     if wet.count() == 0 or wet.min() == wet.max():
-        return []
+        return
+    nodes = _projected.nodes(name, wet.shape[0] - 2, wet.shape[1] - 2)
     lines = axes.contour(*nodes, wet, levels=list(CONTOURS), colors=look.INK, linewidths=0.5, zorder=3)
-    texts = axes.clabel(lines, fmt="%.1f", fontsize=look.SMALL_SIZE - 0.5, inline=True, inline_spacing=2) or []
-    outline = axes.transData.transform_path(_projected.boundary(name))
-    kept: list[Bbox] = []
-    for text in texts:
-        text.set_path_effects([withStroke(linewidth=1.2, foreground=look.PAPER)])
-        box = text.get_window_extent().padded(2.0)
-        if outline.contains_points(box.corners()).all() and not any(box.overlaps(other) for other in kept):
-            kept.append(box)
+    texts = axes.clabel(lines, fmt="%.1f", fontsize=look.SMALL_SIZE, inline=False) or []
+    outline, land = (axes.transData.transform_path(shape(name)) for shape in (_projected.boundary, _projected.land))
+    boxes = {text: text.get_window_extent().padded(2.0) for text in texts}
+    on_land = {text: int(land.contains_points(box.corners()).sum()) for text, box in boxes.items()}
+    kept, named = list(names), set()
+    for text in sorted(texts, key=lambda one: on_land[one]):  # those at sea choose first
+        text.set_path_effects([withStroke(linewidth=2.4, foreground=look.PAPER)])
+        inside = outline.contains_points(boxes[text].corners()).all()
+        idle = on_land[text] > 1 and text.get_text() in named
+        if inside and not idle and not any(boxes[text].overlaps(other) for other in kept):
+            kept.append(boxes[text])
+            named.add(text.get_text())
         else:
             text.remove()
-    return kept
 
 
 def _like(cells: Array, shape: tuple[int, ...]) -> Array:
@@ -196,8 +237,9 @@ def _sea() -> Array:
     return _ordered(open_bundled("ocean_fraction_0.25deg.nc")["ocean_fraction"])
 
 
-def _colour_bar(figure: Figure, height: float, width: float, falls: bool) -> None:
-    bar = figure.add_axes((0.04, 0.82 / height, width, 0.11 / height))
+def _colour_bar(figure: Figure, foot: float, width: float, falls: bool) -> None:
+    height = float(figure.get_figheight())
+    bar = figure.add_axes((0.04, (foot + 0.27) / height, width, 0.11 / height))
     shown = figure.colorbar(
         ScalarMappable(_norm(), look.RATIO_COLOURS), cax=bar, orientation="horizontal", extend="both"
     )
@@ -206,6 +248,6 @@ def _colour_bar(figure: Figure, height: float, width: float, falls: bool) -> Non
     bar.tick_params(length=2.0, labelsize=look.TEXT_SIZE)
     bar.set_title(SCALE, fontsize=look.TEXT_SIZE, loc="left", pad=3.0)
     if falls:
-        patch = Patch(facecolor="none", edgecolor=look.INK, hatch="//////", linewidth=0.4, label=FALLS)
-        figure.legend(handles=[patch], loc="lower left", bbox_to_anchor=(0.03, 1.2 / height), fontsize=look.TEXT_SIZE,
+        patch = Patch(facecolor=look.RATIO_COLOURS(0.0), edgecolor=_PALE, hatch="//////", linewidth=0.0, label=FALLS)
+        figure.legend(handles=[patch], loc="lower left", bbox_to_anchor=(0.03, (foot + 0.65) / height), fontsize=look.TEXT_SIZE,
                       borderaxespad=0.0, handlelength=1.6)  # fmt: skip

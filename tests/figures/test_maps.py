@@ -5,10 +5,11 @@ import pandas as pd
 import pytest
 import xarray as xr
 from matplotlib.axes import Axes
+from matplotlib.text import Text
 
 from massfingerprint.errors import GridError, InputError
 from massfingerprint.figures import _projected, look, maps
-from tests.figures.structure import all_words, outside, overlaps
+from tests.figures.structure import all_words, outside, overlaps, texts
 
 SITES = pd.DataFrame(
     {
@@ -81,6 +82,108 @@ def test_contours_are_labelled_with_their_value():
     assert "| 1.2 |" in words
 
 
+def test_a_fall_on_land_alone_is_not_said():
+    """Where only ground inside Asia is below 0 there is nothing at sea to hatch."""
+    ratio = field()
+    inland = (abs(ratio["lat"] - 45.0) < 5.0) & (abs(ratio["lon"] - 90.0) < 8.0)
+    figure = drawn(ratio.where(~inland, -1.0))
+    assert not [c for c in panel(figure).collections if c.get_gid() == "falls"]
+    assert maps.FALLS not in all_words(figure)
+
+
+def test_lines_keep_their_place_where_the_field_is_smooth():
+    """The means that calm the lines leave a plane field as it is, and go round the globe."""
+    plane = np.add.outer(np.arange(6.0), np.full(8, 2.0))
+    np.testing.assert_allclose(maps._calmed(plane)[1:-1], plane[1:-1], rtol=1e-14)
+    ripple = np.tile([1.0, -1.0], (6, 4))
+    np.testing.assert_allclose(maps._calmed(ripple), 0.0, atol=1e-14)
+
+
+def test_all_words_can_be_read_in_a_column():
+    """At least 6.5 points."""
+    figure = drawn(field(depth=4.0), sites=SITES, poles=("north", "south"))
+    sizes = {t.get_fontsize() for t in figure.findobj(Text) if t.get_visible() and t.get_text().strip()}
+    assert min(sizes) >= 6.5
+
+
+@pytest.mark.parametrize("poles", [("north",), ("south",), ("north", "south"), ("south", "south")])
+def test_panels_of_the_poles_cover_nothing_of_the_world(poles):
+    figure = drawn(poles=poles)
+    world, *caps, bar = figure.axes
+    assert len(caps) == len(set(poles))
+    outline = world.transData.transform_path(_projected.boundary("world"))
+    for cap, name in zip(caps, sorted(set(poles), reverse=True), strict=True):
+        edge = cap.transData.transform(_projected.boundary(name).vertices)
+        assert not outline.contains_points(edge).any()
+        assert not cap.bbox.overlaps(bar.bbox)
+
+
+def test_long_words_get_their_room():
+    """A caption of many lines stays below the colour bar and the panels, a long title above the world."""
+    with look.style():
+        figure = maps.pattern_map(
+            field(depth=4.0), title="A long title of a map " * 7, caption="Much small print. " * 60, poles=("north",)
+        )
+        assert overlaps(figure) == []
+        assert outside(figure) == []
+    title, small = (next(b for words, b in texts(figure) if words.startswith(s)) for s in ("A long", "Much"))
+    assert title.y0 > panel(figure).bbox.y1
+    assert small.y1 < min(axes.bbox.y0 for axes in figure.axes)
+
+
+def site_labels(figure):
+    """Of each name: its text, the display box, the display place of its own marker."""
+    figure.canvas.draw()
+    names = [text for text in panel(figure).texts if text.get_gid() == "site name"]
+    return [(t.get_text(), t.get_window_extent(), panel(figure).transData.transform(t.xy)) for t in names]
+
+
+def gap(box, spot):
+    return np.hypot(*np.maximum(np.maximum(box.min - spot, spot - box.max), 0.0))
+
+
+def test_a_name_is_nearest_to_its_own_marker_or_has_a_line_to_it():
+    with look.style():
+        figure = drawn(sites=SITES)
+    labels = site_labels(figure)
+    assert sorted(name for name, _, _ in labels) == sorted(SITES["site"])
+    lines = [text for text in panel(figure).texts if text.get_gid() == "site line"]
+    lined = {tuple(text.xy) for text in lines}
+    back = panel(figure).transData.inverted()
+    for name, box, own in labels:
+        nearer = any(gap(box, spot) < gap(box, own) - 1.0 for _, _, spot in labels)
+        has_line = any(np.allclose(back.transform(own), xy) for xy in lined)
+        assert has_line or not nearer, name
+        assert has_line or gap(box, own) < 16.0, name  # 9 points and the rim of the box
+
+
+def test_lines_to_names_run_through_no_marker_nor_name():
+    """Fifteen harbours in a bay: all are named, and every line is clear of the others."""
+    turn = np.linspace(0.0, 2.0 * np.pi, 15, endpoint=False)
+    bay = pd.DataFrame(
+        {
+            "site": [f"harbour number {n}" for n in range(15)],
+            "lat": 5.0 + 8.0 * np.sin(turn),
+            "lon": 200.0 + 8.0 * np.cos(turn),
+        }
+    )
+    with look.style():
+        figure = drawn(sites=bay)
+        assert overlaps(figure) == []
+    labels = site_labels(figure)
+    assert len(labels) == 15
+    lines = [text for text in panel(figure).texts if text.get_gid() == "site line"]
+    assert lines
+    for line in lines:
+        start = panel(figure).transData.transform(line.xy)
+        end = start + np.array(line.xyann) * figure.dpi / 72.0
+        along = start + np.linspace(0.0, 1.0, 60)[:, None] * (end - start)
+        for _, box, spot in labels:
+            own = np.allclose(spot, start, atol=1e-6)
+            assert own or np.hypot(*(along - spot).T).min() > 1.5
+            assert own or not any(box.contains(x, y) for x, y in along)
+
+
 def test_sites_stand_at_their_places():
     figure = drawn(sites=SITES)
     (line,) = [one for one in panel(figure).lines if one.get_gid() == "sites"]
@@ -151,3 +254,11 @@ def test_other_bad_input_is_refused():
         drawn(sites=SITES.drop(columns="lon"))
     with pytest.raises(InputError, match="poles: no pole 'east'"):
         drawn(poles=("east",))
+    with pytest.raises(InputError, match=r"poles: must be a list of poles, got the text 'north'\. Write \('north',\)"):
+        drawn(poles="north")
+
+
+def test_sites_are_left_as_they_are():
+    before = SITES.copy(deep=True)
+    drawn(sites=SITES)
+    pd.testing.assert_frame_equal(SITES, before)
