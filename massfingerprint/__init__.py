@@ -25,6 +25,7 @@ if TYPE_CHECKING:
     from massfingerprint.options import set_options
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
     from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
+    from massfingerprint.sealevel.nearfield import add_near_field, near_field
     from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
@@ -35,6 +36,7 @@ if TYPE_CHECKING:
 __version__ = "0.1.0"
 
 _HOMES = {
+    "add_near_field": "sealevel.nearfield",
     "align": "mass.combine",
     "apply_kernels": "sealevel.kernels",
     "at_sites": "sealevel.sites",
@@ -44,6 +46,7 @@ _HOMES = {
     "disc": "load.regions",
     "in_frame": "earth.frames",
     "love_numbers": "earth.love",
+    "near_field": "sealevel.nearfield",
     "ocean_fraction": "load.ocean",
     "prepare_solver": "sealevel.solver",
     "published_rates": "mass.published",
@@ -71,6 +74,7 @@ _HOMES = {
 }
 
 __all__ = [
+    "add_near_field",
     "align",
     "apply_kernels",
     "at_sites",
@@ -80,6 +84,7 @@ __all__ = [
     "disc",
     "in_frame",
     "love_numbers",
+    "near_field",
     "ocean_fraction",
     "prepare_solver",
     "published_rates",

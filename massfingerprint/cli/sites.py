@@ -10,6 +10,7 @@ import pandas as pd
 import xarray as xr
 
 from massfingerprint.constants import GIGATONNES_PER_MILLIMETRE
+from massfingerprint.earth.green import LEAST_DEGREE
 from massfingerprint.earth.love import love_numbers
 from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
@@ -21,7 +22,8 @@ from massfingerprint.mass.intervals import shown
 from massfingerprint.mass.published import published_rates
 from massfingerprint.mass.scope import check_scope
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
-from massfingerprint.sealevel.sites import RESOLVED_BEYOND, at_sites
+from massfingerprint.sealevel.nearfield import WITHIN, add_near_field, near_field
+from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.points import read_sites
@@ -94,13 +96,14 @@ def _answer(rates: pd.DataFrame, sites_file: Path, max_degree: int, spacing: flo
     sites = read_sites(sites_file)
     outlines = regions(*rates["source"])
     ocean = ocean_fraction(spacing)
-    prepared = prepare_solver(ocean, love_numbers(max_degree=max_degree), max_degree=max_degree)
+    prepared = prepare_solver(ocean, love_numbers(max_degree=max(max_degree, LEAST_DEGREE)), max_degree=max_degree)
     load = spread_mass(outlines, ocean)
     patterns = solve_fingerprints(prepared, load, outputs=("relative_sea_level", "bedrock_up"))
     coarse = prepared
     if max_degree > _RANGE_DEGREE:
         coarse = prepare_solver(ocean, love_numbers(max_degree=_RANGE_DEGREE), max_degree=_RANGE_DEGREE)
-    return Answer(rates, prepared, at_sites(patterns, sites), range_within(coarse, load, sites))
+    here = add_near_field(at_sites(patterns, sites), near_field(prepared, outlines, load, sites))
+    return Answer(rates, prepared, here, range_within(coarse, load, sites))
 
 
 def _table(answer: Answer) -> pd.DataFrame:
@@ -127,7 +130,7 @@ def _table(answer: Answer) -> pd.DataFrame:
 
 
 def _unresolved(answer: Answer) -> list[str]:
-    """Name, per site, the mass sources within the distance at which the solver's degrees do not resolve their load."""
+    """Name, per site, the mass sources whose outline is too coarse there for the near field."""
     near = answer.patterns["resolved"].values == 0
     distance = answer.patterns["distance_to_load"].values
     names = answer.rates["source"].to_numpy()
@@ -202,7 +205,8 @@ def _notes(answer: Answer) -> list[str]:
         "evenly over its ice; if elsewhere: lowest and highest total if each source's mass sat in one cell of it. ratio to mean: "
         "total over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
         f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
-        f"not resolved: within {RESOLVED_BEYOND:g} km of the ice named, where higher degrees would change the value."
+        f"Within {WITHIN:g} km of ice the value has the near field of its outline in it, all degrees; not resolved: the outline "
+        "named is too coarse there."
     )
     return [
         line for paragraph in (text, *_rounding(answer), _LEFT_OUT, _CAUTION) for line in textwrap.wrap(paragraph, 110)

@@ -5,6 +5,7 @@ import xarray as xr
 
 from massfingerprint.arguments import one_of, whole_number
 from massfingerprint.bundled import open_bundled
+from massfingerprint.constants import GRAVITATIONAL_CONSTANT
 from massfingerprint.earth._radial import surface_numbers
 from massfingerprint.earth.layers import EarthModel, prem
 
@@ -50,8 +51,27 @@ def compute_love_numbers(model: EarthModel, max_degree: int, *, refinement: floa
             "mean_density": model.mean_density,
             "surface_gravity": model.surface_gravity,
             "source": f"{model.source}; radial equations integrated by massfingerprint",
+            **half_space_limits(model),
         },
     )
+
+
+def half_space_limits(model: EarthModel) -> dict[str, float]:
+    """Limits of h', l l' and l k' at high degree, from the top of an Earth model; dimensionless, as attributes of its table.
+
+    Source
+    ------
+    Farrell 1972: -g^2 (lambda + 2 mu)/(4 pi G mu (lambda + mu)), g^2/(4 pi G (lambda + mu)), -rho g a/(2 mu).
+    """
+    top, surface = len(model.layers) - 1, np.asarray(model.radius)
+    lame, shear = (float(value) for value in model.moduli(top, surface))
+    density, gravity = float(model.density(top, surface)), model.surface_gravity
+    scale = gravity**2 / (4.0 * np.pi * GRAVITATIONAL_CONSTANT.value)
+    return {
+        "h_load_limit": -scale * (lame + 2.0 * shear) / (shear * (lame + shear)),
+        "l_load_limit": scale / (lame + shear),
+        "k_load_limit": -density * gravity * model.radius / (2.0 * shear),
+    }
 
 
 def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool = False) -> xr.Dataset:
@@ -83,5 +103,5 @@ def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool
     if not recompute:
         shipped = open_bundled(f"love_numbers_{model}.nc")
         if max_degree < shipped.sizes["degree"]:
-            return shipped.isel(degree=slice(0, max_degree + 1))
+            return shipped.isel(degree=slice(0, max_degree + 1)).assign_attrs(half_space_limits(MODELS[model]()))
     return compute_love_numbers(MODELS[model](), max_degree)

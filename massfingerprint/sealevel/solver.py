@@ -41,6 +41,8 @@ class Prepared:
         The arrays of the equation.
     correction : Correction
         What speeds its solution up.
+    long_love : Dataset
+        All Love numbers that were given, for values beside the load.
     """
 
     grid: Grid
@@ -51,6 +53,7 @@ class Prepared:
     ocean_area: float
     operator: Operator = field(repr=False)
     correction: Correction = field(repr=False)
+    long_love: xr.Dataset = field(repr=False)
 
     @property
     def gigatonnes_per_millimetre(self) -> float:
@@ -162,4 +165,4 @@ def prepare_solver(
     operator = Operator(rings, rings.synthesise(fraction), _transform.resized(fraction, max_degree), response, density)
     area = float(fraction[0].real * np.sqrt(4.0 * np.pi)) * float(love.attrs["radius"]) ** 2
     correction = corrections(operator, fraction)
-    return Prepared(grid, table, max_degree, bool(rotation), density, area, operator, correction)
+    return Prepared(grid, table, max_degree, bool(rotation), density, area, operator, correction, love.copy(deep=True))

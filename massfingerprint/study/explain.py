@@ -202,7 +202,14 @@ def _per_gigatonne(folder: Folder, row: pd.Series) -> Trace:
         Input("lon", float(here["lon"]), "degrees_east"),
         Input("coefficients", f"{held} of {source} in patterns.nc", "mm Gt-1"),
     ]
+    near = float(here.sel(source=source)[f"{row['field']}_per_gigatonne_added_near_field"])
+    if near:
+        inputs.append(Input("near_field", near, "mm Gt-1"))
     formula = "-sum over degree, order of (C cos(order lon) + S sin(order lon)) P(degree, order; lat), orthonormal"
+    if near:
+        formula += (
+            " - near_field (outline within 300 km: all degrees of its direct elastic effect, for those of the cells)"
+        )
     origin = {
         "solved": f"sea-level equation to degree {choices['max_degree']}, rotation {choices['rotation']}, frame "
         f"{choices['reference_frame']}, ocean fraction at {choices['spacing']} degree",

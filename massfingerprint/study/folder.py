@@ -34,7 +34,17 @@ from massfingerprint.study.tables import (
 PATTERNS, SITES, LEDGER = "patterns.nc", "sites.nc", "ledger.nc"
 SUMMARY_TEXT, SUMMARY_JSON, PROVENANCE, GUIDE = "summary.txt", "summary.json", "provenance.json", "README.txt"
 TABLES, FIGURES = "tables", "figures"
-NUMBERS = ("value", "sigma", "half_width", "lowest", "highest", "truncation", "distance_to_load", "resolved")
+NUMBERS = (
+    "value",
+    "sigma",
+    "half_width",
+    "lowest",
+    "highest",
+    "truncation",
+    "distance_to_load",
+    "near_field",
+    "resolved",
+)
 TABLE_NAMES = ("mass", "per_gigatonne", "site_rates", "site_levels", "site_rates_shown")
 
 

@@ -6,22 +6,24 @@ from dataclasses import dataclass, field
 
 import geopandas as gpd
 import numpy as np
-import pandas as pd
 import xarray as xr
 from numpy.typing import NDArray
 
 from massfingerprint import vocabulary
+from massfingerprint.earth.green import LEAST_DEGREE
 from massfingerprint.earth.love import love_numbers
 from massfingerprint.errors import DamagedFileError
 from massfingerprint.files.arrays import fetch, fingerprint_of, store
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.fingerprints import FIELDS, solve_fingerprints
+from massfingerprint.sealevel.nearfield import add_near_field, near_field
 from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.grids import grid_of
 from massfingerprint.sphere.harmonics import labelled, synthesise
+from massfingerprint.study.inputs import Inputs
 from massfingerprint.study.recipe import Recipe
 
 SITE_FIELDS = ("relative_sea_level", "bedrock_up")  # sea surface at a site is their sum
@@ -66,7 +68,7 @@ def prepare(recipe: Recipe) -> Problem:
     """Ocean, Love numbers and solver of a recipe."""
     ocean = ocean_fraction(recipe.grid.spacing)
     degree = recipe.grid.max_degree
-    love = love_numbers(recipe.earth.model, max_degree=degree)
+    love = love_numbers(recipe.earth.model, max_degree=max(degree, LEAST_DEGREE))
     return Problem(prepare_solver(ocean, love, max_degree=degree, rotation=recipe.earth.rotation), ocean)
 
 
@@ -179,15 +181,18 @@ def _assembled(
     )
 
 
-def site_patterns(recipe: Recipe, problem: Problem, solved: Solved, sites: pd.DataFrame) -> xr.Dataset:
-    """Fields at sites per gigatonne added (source, site), with truncation, distance, and the range within each source."""
+def site_patterns(recipe: Recipe, problem: Problem, solved: Solved, inputs: Inputs) -> xr.Dataset:
+    """Fields at sites per gigatonne added (source, site), near field, truncation, distance, and the range within each source."""
     named = {f"{name}_coefficients" for name in SITE_FIELDS}
-    coefficients = solved.patterns[[*sorted(named), "load_extent"]]
+    coefficients, sites = solved.patterns[[*sorted(named), "load_extent"]], inputs.sites
     out = at_sites(coefficients, sites)
     for end in ("", "_truncation", "_tapered"):
         level, up = out[f"relative_sea_level{end}"], out[f"bedrock_up{end}"]
         words = str(level.attrs["long_name"]).replace("relative sea level", "sea surface")
         out[f"sea_surface{end}"] = (level + up).assign_attrs(units=level.attrs["units"], long_name=words)
+    frame = recipe.output.reference_frame
+    near = near_field(problem.prepared, inputs.outlines, solved.load, sites, reference_frame=frame)
+    out = add_near_field(out, near)
     coarse = problem.prepared
     if coarse.max_degree > _RANGE_DEGREE:
         love = love_numbers(recipe.earth.model, max_degree=_RANGE_DEGREE)

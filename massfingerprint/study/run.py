@@ -118,7 +118,7 @@ def compute_study(
         solved = solve_patterns(recipe, problem, inputs.outlines, kept=kept, progress=progress)
     with clock.stage("sites"):
         progress("sites", 0, 1)
-        here = site_patterns(recipe, problem, solved, inputs.sites)
+        here = site_patterns(recipe, problem, solved, inputs)
         progress("sites", 1, 1)
     with clock.stage("series and rates"):
         progress("series", 0, 1)

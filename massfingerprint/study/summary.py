@@ -8,7 +8,6 @@ import pandas as pd
 from tabulate import tabulate
 
 from massfingerprint.mass.summary import TOTAL, sentence
-from massfingerprint.sealevel.sites import RESOLVED_BEYOND
 from massfingerprint.study.metadata import CAUTION, LEFT_OUT, UNCERTAINTY
 from massfingerprint.study.run import Study
 from massfingerprint.vocabulary import readable
@@ -53,12 +52,14 @@ def site_sentence(tables: dict[str, pd.DataFrame], site: str, window: str, span:
 
 
 def near_ice(tables: dict[str, pd.DataFrame]) -> list[str]:
-    """One line for each site and source too close for the degree of the solution."""
-    rows = _of(tables["per_gigatonne"], field="relative_sea_level", resolved=0)
+    """One line for each site and source beside each other: that the near field is in the value, or why it cannot be trusted."""
+    rows = _of(tables["per_gigatonne"], field="relative_sea_level")
+    beside = rows[rows["near_field"] == 1]
     return [
-        f"{row['site']}: not resolved, {row['source']} is {row['distance_to_load']:.0f} km away (within {RESOLVED_BEYOND:g} km "
-        "higher degrees would change the value)."
-        for _, row in rows.iterrows()
+        f"{row['site']}: {row['source']} is {row['distance_to_load']:.0f} km away, its near field is in the value."
+        if row["resolved"] == 1
+        else f"{row['site']}: not resolved, {row['source']} is {row['distance_to_load']:.0f} km away, its outline too coarse there."
+        for _, row in beside.iterrows()
     ]
 
 
@@ -130,7 +131,7 @@ def summary_data(study: Study, tables: dict[str, pd.DataFrame]) -> dict[str, Any
         "reference_frame": study.recipe.output.reference_frame,
         "gigatonnes_per_millimetre": study.patterns.attrs["gigatonnes_per_millimetre"],
         "windows": windows,
-        "not_resolved": near_ice(tables),
+        "near_ice": near_ice(tables),
         "uncertainty": UNCERTAINTY,
         "left_out": LEFT_OUT,
         "caution": CAUTION,

@@ -77,8 +77,9 @@ def per_gigatonne_table(at_sites: xr.Dataset, ids: Identifiers) -> pd.DataFrame:
     Returns
     -------
     DataFrame
-        ``id field site source value lowest highest truncation unit distance_to_load resolved``; positive = rise or uplift for
-        a loss; ``lowest`` and ``highest`` (relative sea level only) if the loss sat in one cell of the source; distance in km.
+        ``id field site source value lowest highest truncation unit distance_to_load near_field resolved``; positive = rise or
+        uplift for a loss; ``lowest`` and ``highest`` (relative sea level only): if the loss sat in one cell of the source;
+        distance in km; ``near_field`` 1 where it is in the value.
     """
     rows = []
     for name in FIELD_LABELS:
@@ -101,6 +102,7 @@ def per_gigatonne_table(at_sites: xr.Dataset, ids: Identifiers) -> pd.DataFrame:
                         "truncation": -float(one[f"{name}_truncation"]),
                         "unit": "mm Gt-1",
                         "distance_to_load": float(one["distance_to_load"]),
+                        "near_field": int(one["near_field"]),
                         "resolved": int(one["resolved"]),
                     }
                 )
