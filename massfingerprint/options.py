@@ -1,4 +1,4 @@
-"""Settings of the running process: the only home of the thread count."""
+"""Settings of the running process: the only home of the thread count and of the memory limit."""
 
 import os
 from collections.abc import Iterator
@@ -19,6 +19,11 @@ def threads() -> int:
     return _settings.get("threads", _available_processors())
 
 
+def memory_limit() -> int | None:
+    """Bytes beyond which results of a solve go to a temporary file instead of memory; None: no limit."""
+    return _settings.get("memory_limit")
+
+
 @contextmanager
 def _restored(previous: dict[str, int]) -> Iterator[None]:
     try:
@@ -28,13 +33,16 @@ def _restored(previous: dict[str, int]) -> Iterator[None]:
         _settings.update(previous)
 
 
-def set_options(*, threads: int | None = None) -> AbstractContextManager[None]:
+def set_options(*, threads: int | None = None, memory_limit: int | None = None) -> AbstractContextManager[None]:
     """Set process-wide options; used as a context manager it restores the old ones at the end.
 
     Parameters
     ----------
     threads : int, optional
         Threads a transform may use, 1 or more. Results do not depend on it beyond rounding.
+    memory_limit : int, optional
+        Bytes that the results of one ``solve_fingerprints`` may take in memory; larger ones are kept in a temporary file and
+        read as they are used. 0 puts all of them there; by default nothing is.
 
     Returns
     -------
@@ -44,9 +52,11 @@ def set_options(*, threads: int | None = None) -> AbstractContextManager[None]:
     Raises
     ------
     InputError
-        If ``threads`` is not a positive whole number.
+        If ``threads`` is not a positive whole number, or ``memory_limit`` not one of 0 or more.
     """
     previous = dict(_settings)
     if threads is not None:
         _settings["threads"] = whole_number(threads, argument="threads", lowest=1)
+    if memory_limit is not None:
+        _settings["memory_limit"] = whole_number(memory_limit, argument="memory_limit", lowest=0)
     return _restored(previous)

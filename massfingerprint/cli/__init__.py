@@ -13,6 +13,7 @@ from massfingerprint.errors import MassFingerprintError
 _COMMANDS = {
     "explain": "Where a number of a study comes from: inputs, formula, factor, citation, checksum.",
     "earth": "Love numbers of the built-in Earth.",
+    "kernel": "What a gigatonne lost anywhere does at a coast: ranked, with range, map.",
     "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
     "sites": "Sea level at named coasts from published mass rates.",
     "study": "A whole study: one file in, a folder of answers out.",

@@ -7,6 +7,7 @@ from contextlib import contextmanager
 import click
 
 _STAGES = {
+    "kernels": "solving kernels",
     "patterns": "solving patterns",
     "sites": "values at sites",
     "series": "series and rates",

@@ -27,6 +27,7 @@ Array = NDArray[np.float64]
 STEPS = np.round(np.arange(0.4, 1.65, 0.1), 1)  # of the colours, as far below 1 as above
 CONTOURS = (0.0, 0.5, 0.8, 1.0, 1.1, 1.2, 1.3)
 SCALE = "relative sea level as a multiple of the global mean [1]"
+KERNEL_SCALE = "there, for ice lost here, over the global mean [1]"
 FALLS = "hatched: relative sea level falls"
 _ROWS = {"world": 180, "north": 360, "south": 360}  # rings of cells drawn, pole to pole
 _WORLD, _POLAR = 3.45, 1.75  # inches: height of the world, across a polar panel
@@ -43,6 +44,7 @@ def pattern_map(
     caption: str,
     sites: pd.DataFrame | None = None,
     poles: Sequence[str] = (),
+    everywhere: bool = False,
 ) -> Figure:
     """Draw relative sea level divided by the global mean.
 
@@ -56,6 +58,8 @@ def pattern_map(
         Columns site, lat, lon: marked and named.
     poles : sequence of str
         ``north``, ``south``: panels of the polar cap below the world.
+    everywhere : bool
+        Show land too, as outlines: the field is what a loss here does at one site, not what it does here.
 
     Returns
     -------
@@ -83,8 +87,10 @@ def pattern_map(
     for name, axes in panels.items():
         _frame(axes, name)
     names = _name_sites(world, marked, figure.axes[1:])  # sites stand on the world map alone
-    falls = [_fill(axes, name, values, names if axes is world else []) for name, axes in panels.items()]
-    _colour_bar(figure, foot, (0.62, 0.62, 0.42)[len(shown)], any(falls))
+    clear = {name: names if axes is world else [] for name, axes in panels.items()}
+    falls = [_fill(axes, name, values, clear[name], everywhere) for name, axes in panels.items()]
+    words = KERNEL_SCALE if everywhere else SCALE
+    _colour_bar(figure, foot, (0.62, 0.62, 0.42)[len(shown)], FALLS if any(falls) else "", words)
     look.caption(figure, caption)
     return figure
 
@@ -151,10 +157,10 @@ def _frame(axes: Axes, name: str) -> None:
     axes.apply_aspect()  # places in pixels are asked for before anything is drawn
 
 
-def _fill(axes: Axes, name: str, values: Array, names: Sequence[Bbox]) -> bool:
+def _fill(axes: Axes, name: str, values: Array, names: Sequence[Bbox], everywhere: bool) -> bool:
     """Field, hatching, contours clear of the names, land, outline; returns whether the sea falls in this view."""
     cells = _cells(name, values)
-    wet = _like(_cells(name, _sea()), cells.shape) >= _SEA
+    wet = (_like(_cells(name, _sea()), cells.shape) >= _SEA) | everywhere
     edge = PathPatch(_projected.boundary(name), facecolor="none", edgecolor=look.QUIET, linewidth=0.6, zorder=5)
     axes.add_artist(edge)  # add_patch would measure it, slowly
     nodes, field = _projected.nodes(name, *cells.shape), _projected.on_nodes(cells)
@@ -167,7 +173,8 @@ def _fill(axes: Axes, name: str, values: Array, names: Sequence[Bbox]) -> bool:
         hatch.set_clip_path(edge)
     dry = _projected.on_nodes(wet.astype(float)) < _SEA
     _contours(axes, name, np.ma.masked_where(dry, _projected.on_nodes(_calmed(cells))), names)
-    ground = PathPatch(_projected.land(name), facecolor=look.LAND, edgecolor=look.QUIET, linewidth=0.25, zorder=4)
+    face, line = ("none", 0.45) if everywhere else (look.LAND, 0.25)
+    ground = PathPatch(_projected.land(name), facecolor=face, edgecolor=look.QUIET, linewidth=line, zorder=4)
     axes.add_artist(ground)
     for artist in (fill, ground):
         artist.set_clip_path(edge)
@@ -237,7 +244,7 @@ def _sea() -> Array:
     return _ordered(open_bundled("ocean_fraction_0.25deg.nc")["ocean_fraction"])
 
 
-def _colour_bar(figure: Figure, foot: float, width: float, falls: bool) -> None:
+def _colour_bar(figure: Figure, foot: float, width: float, falls: str, words: str) -> None:
     height = float(figure.get_figheight())
     bar = figure.add_axes((0.04, (foot + 0.27) / height, width, 0.11 / height))
     shown = figure.colorbar(
@@ -246,8 +253,8 @@ def _colour_bar(figure: Figure, foot: float, width: float, falls: bool) -> None:
     shown.set_ticks([0.4, 0.6, 0.8, 1.0, 1.2, 1.4, 1.6])
     shown.outline.set_linewidth(0.4)
     bar.tick_params(length=2.0, labelsize=look.TEXT_SIZE)
-    bar.set_title(SCALE, fontsize=look.TEXT_SIZE, loc="left", pad=3.0)
+    bar.set_title(words, fontsize=look.TEXT_SIZE, loc="left", pad=3.0)
     if falls:
-        patch = Patch(facecolor=look.RATIO_COLOURS(0.0), edgecolor=_PALE, hatch="//////", linewidth=0.0, label=FALLS)
+        patch = Patch(facecolor=look.RATIO_COLOURS(0.0), edgecolor=_PALE, hatch="//////", linewidth=0.0, label=falls)
         figure.legend(handles=[patch], loc="lower left", bbox_to_anchor=(0.03, (foot + 0.65) / height), fontsize=look.TEXT_SIZE,
                       borderaxespad=0.0, handlelength=1.6)  # fmt: skip

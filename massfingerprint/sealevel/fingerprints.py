@@ -6,12 +6,13 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from massfingerprint import vocabulary
+from massfingerprint import options, vocabulary
 from massfingerprint.arguments import one_of, real_number
 from massfingerprint.earth.frames import check_frame
 from massfingerprint.earth.response import coefficient_factors
 from massfingerprint.earth.rotation import length_of_day_change, polar_motion, rotation_vector
 from massfingerprint.errors import InputError, NotConvergedError
+from massfingerprint.files.scratch import scratch_array
 from massfingerprint.sealevel._equation import Solution, solve
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
@@ -185,8 +186,12 @@ class _Store:
 
     def __init__(self, names: tuple[str, ...], count: int, max_degree: int, grid: Grid) -> None:
         self._names, self._grid = names, grid
-        self._fields = {name: np.empty((count, grid.nlat, grid.nlon)) for name in names}
-        self._pairs = {name: np.empty((count, 2, _transform.coefficient_count(max_degree))) for name in names}
+        shapes = (count, grid.nlat, grid.nlon), (count, 2, _transform.coefficient_count(max_degree))
+        size = 8 * len(names) * sum(int(np.prod(shape)) for shape in shapes)
+        limit = options.memory_limit()
+        new = np.empty if limit is None or size <= limit else scratch_array
+        self._fields = {name: new(shapes[0]) for name in names}
+        self._pairs = {name: new(shapes[1]) for name in names}
         self._scalars = np.empty((count, len(_SCALARS)))
         self._account: dict[str, NDArray] = {
             "rounds": np.empty(count, dtype=np.int32),
@@ -215,7 +220,8 @@ class _Store:
             attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
             field = self._fields[name] if unit == 1.0 else self._fields[name].__imul__(unit)
             out[name] = ((*lead, "lat", "lon"), field.reshape((*shape, *field.shape[-2:])), attrs)
-            pairs = labelled((self._pairs[name] * unit).reshape((*shape, *self._pairs[name].shape[1:])), lead, coords)
+            self._pairs[name] *= unit
+            pairs = labelled(self._pairs[name].reshape((*shape, *self._pairs[name].shape[1:])), lead, coords)
             own = {"units": attrs["units"], "long_name": f"orthonormal coefficients of {attrs['long_name']}"}
             out[f"{name}_coefficients"] = pairs.assign_attrs(own)
         for column, name in enumerate(_SCALARS):

@@ -17,11 +17,12 @@ from massfingerprint.arguments import one_of
 from massfingerprint.constants import KILOGRAMS_PER_GIGATONNE
 from massfingerprint.earth.frames import check_frame
 from massfingerprint.earth.response import coefficient_factors
-from massfingerprint.errors import InputError, NotConvergedError
+from massfingerprint.errors import GridError, InputError, NotConvergedError
 from massfingerprint.sealevel._equation import solve
+from massfingerprint.sealevel.sites import taper
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
-from massfingerprint.sphere.grids import grid_of
+from massfingerprint.sphere.grids import Grid, grid_of
 from massfingerprint.sphere.harmonics import check_finite, labelled, max_degree_of
 from massfingerprint.sphere.points import check_sites
 
@@ -79,6 +80,7 @@ def site_kernels(
     outputs: tuple[str, ...] = ("relative_sea_level",),
     reference_frame: str = "CM",
     tolerance: float = 1e-8,
+    tapered: bool = False,
 ) -> xr.Dataset:
     """Solve for what one gigatonne added anywhere does at each site.
 
@@ -95,13 +97,16 @@ def site_kernels(
         Of sea surface and bedrock.
     tolerance : float
         Of the solves.
+    tapered : bool
+        Fade the upper half of the degrees out at the site: the kernel is smooth, and its values are those that ``at_sites``
+        calls ``<name>_tapered``.
 
     Returns
     -------
     Dataset (site, lat, lon)
         mm Gt-1 on the prepared ocean's grid, positive = rise or uplift at the site for mass *added* at (lat, lon), with
-        ``<name>_coefficients`` (site, part, coefficient); ``site_lat``, ``site_lon``. Coefficients are cut at the degree of the
-        solution, so the field ripples round the site; apply it to loads rather than reading it there.
+        ``<name>_coefficients`` (site, part, coefficient); ``site_lat``, ``site_lon``. Untapered, coefficients are cut at the
+        degree of the solution and the field ripples; apply it to loads rather than reading it.
 
     Raises
     ------
@@ -118,10 +123,12 @@ def site_kernels(
     check_frame(reference_frame)
     table, grid = check_sites(sites), prepared.grid
     shape = (len(table), _transform.coefficient_count(prepared.max_degree))
+    degree, _ = _transform.degrees_and_orders(prepared.max_degree)
+    weights = taper(degree, prepared.max_degree) if tapered else np.ones(shape[1])
     pairs = {name: np.empty((shape[0], 2, shape[1])) for name in names}
     fields = {name: np.empty((shape[0], grid.nlat, grid.nlon)) for name in names}
     for row, (site, lat, lon) in enumerate(table.itertuples(index=False)):
-        point = point_mass(prepared, float(lat), float(lon))
+        point = point_mass(prepared, float(lat), float(lon)) * weights
         found = _kernels_of_site(prepared, point, names, reference_frame, tolerance, f"site {site!r}")
         for name, coefficients in found.items():
             pairs[name][row] = _transform.real_from_complex(coefficients) * 1e3
@@ -134,8 +141,8 @@ def _dataset(prepared: Prepared, table: pd.DataFrame, fields: dict[str, Array], 
     grid, names = prepared.grid, table["site"].to_numpy(dtype=object)
     coords: dict[str, Any] = {
         "site": names,
-        "site_lat": ("site", table["lat"].to_numpy(), {"units": "degrees_north"}),
-        "site_lon": ("site", table["lon"].to_numpy(), {"units": "degrees_east"}),
+        "site_lat": ("site", table["lat"].to_numpy(), {"units": "degrees_north", "long_name": "latitude of the site"}),
+        "site_lon": ("site", table["lon"].to_numpy(), {"units": "degrees_east", "long_name": "longitude of the site"}),
         "lat": ("lat", grid.latitudes, {"units": "degrees_north", "standard_name": "latitude"}),
         "lon": ("lon", grid.longitudes, {"units": "degrees_east", "standard_name": "longitude"}),
     }
@@ -162,7 +169,8 @@ def apply_kernels(kernels: xr.Dataset, load: xr.DataArray) -> xr.Dataset:
     kernels : Dataset
         From :func:`site_kernels`.
     load : DataArray (..., lat, lon)
-        Surface mass, positive = added, in kg m-2 or kg m-2 Gt-1, on any regular global cell-centred grid.
+        Surface mass, positive = added, in kg m-2 or kg m-2 Gt-1, on any regular global cell-centred grid; a lazy (dask) one stays
+        lazy.
 
     Returns
     -------
@@ -182,36 +190,74 @@ def apply_kernels(kernels: xr.Dataset, load: xr.DataArray) -> xr.Dataset:
         raise InputError(f"load: must be a DataArray (..., lat, lon), got {type(load).__name__}. Use spread_mass(...).")
     unit, scale = vocabulary.require(load.attrs, ("kg m-2", "kg m-2 Gt-1"), argument="load")
     grid = grid_of(load, argument="load")
-    check_finite(load, argument="load")
     load = load.transpose(..., "lat", "lon")
     if "site" in load.dims:
         raise InputError("load: the dimension name 'site' is used by the answer. Rename it first.")
-    degree = max_degree_of(kernels[f"{names[0]}_coefficients"])
-    held = _contractions(kernels, names, min(grid.band_limit, degree))
+    degree = min(grid.band_limit, max_degree_of(kernels[f"{names[0]}_coefficients"]))
+    held = _coefficients(kernels, names, degree)
     # mm per gigatonne times kg m-2: the area element is a^2, a gigatonne 1e12 kg
     factor = scale * float(kernels.attrs["radius"]) ** 2 / KILOGRAMS_PER_GIGATONNE.value
-    factor *= 1.0 if unit == "kg m-2 Gt-1" else 1e-3
+    held *= factor * (1.0 if unit == "kg m-2 Gt-1" else 1e-3)
+    lazy = load.chunks is not None
+    if lazy or int(np.prod(load.shape[:-2])) > held.shape[0]:
+        weights = grid.from_rings(_transform.adjoint_analyse(held, (grid.nlat, grid.nlon), grid.first_azimuth))
+        values = _summed(load, weights)
+    else:
+        check_finite(load, argument="load")
+        values = _contracted(load, grid, held, degree)
+    return _at_sites(values, kernels, names, unit == "kg m-2 Gt-1")
+
+
+def _coefficients(kernels: xr.Dataset, names: list[str], degree: int) -> Complex:
+    """Coefficients (field times site, n) up to a degree."""
+    rows = [kernels[f"{name}_coefficients"].transpose("site", "part", "coefficient").values for name in names]
+    cut = _transform.resized(np.concatenate(rows), degree)
+    return _transform.complex_from_real(cut)
+
+
+def _contracted(load: xr.DataArray, grid: Grid, held: Complex, degree: int) -> xr.DataArray:
+    """Values (..., kernel) by one analysis a load: cheapest for few loads."""
     flat = load.values.reshape((-1, grid.nlat, grid.nlon))
-    values = np.empty((len(names), flat.shape[0], kernels.sizes["site"]))
+    pairs = _transform.real_from_complex(held).reshape((held.shape[0], -1))  # real ones contract by a plain sum
+    out = np.empty((flat.shape[0], held.shape[0]))
     for row, one in enumerate(flat):
-        alm = _transform.analyse(grid.to_rings(one), min(grid.band_limit, degree), grid.first_azimuth)
-        values[:, row] = factor * (held @ _transform.real_from_complex(alm).ravel())
+        alm = _transform.analyse(grid.to_rings(one), degree, grid.first_azimuth)
+        out[row] = pairs @ _transform.real_from_complex(alm).ravel()
     lead = load.dims[:-2]
     coords = {key: value for key, value in load.coords.items() if set(value.dims) <= set(lead)}
-    coords |= {
-        "site": kernels["site"],
-        "lat": ("site", kernels["site_lat"].values),
-        "lon": ("site", kernels["site_lon"].values),
-    }
-    out = xr.Dataset(coords=coords, attrs=dict(kernels.attrs))
-    for name, column in zip(names, values, strict=True):
-        attrs = vocabulary.attributes(name, per_gigatonne=unit == "kg m-2 Gt-1")
-        out[name] = ((*lead, "site"), column.reshape((*load.shape[:-2], -1)), attrs)
+    return xr.DataArray(out.reshape((*load.shape[:-2], -1)), dims=(*lead, "kernel"), coords=coords)
+
+
+def _summed(load: xr.DataArray, weights: Array) -> xr.DataArray:
+    """Values (..., kernel) by weights (kernel, lat, lon) on the cells, block by block if the load is lazy."""
+    flat = weights.reshape((weights.shape[0], -1)).T
+
+    def block(values: NDArray) -> Array:
+        rows = np.asarray(values, dtype=np.float64).reshape((-1, flat.shape[0]))
+        out = rows @ flat
+        if not np.isfinite(out).all():
+            raise GridError("load: holds values that are not finite. Fill or remove them first.")
+        return out.reshape((*values.shape[:-2], flat.shape[1]))
+
+    return xr.apply_ufunc(
+        block,
+        load.chunk(dict.fromkeys(("lat", "lon"), -1)) if load.chunks is not None else load,
+        input_core_dims=[["lat", "lon"]],
+        output_core_dims=[["kernel"]],
+        dask="parallelized",
+        output_dtypes=[np.float64],
+        dask_gufunc_kwargs={"output_sizes": {"kernel": flat.shape[1]}},
+    )
+
+
+def _at_sites(values: xr.DataArray, kernels: xr.Dataset, names: list[str], per_gigatonne: bool) -> xr.Dataset:
+    """The kernels' own dimension parted into fields and sites."""
+    count = kernels.sizes["site"]
+    places = {str(axis): ("site", kernels[f"site_{axis}"].values) for axis in ("lat", "lon")}
+    places["site"] = ("site", kernels["site"].values)
+    out = xr.Dataset(attrs=dict(kernels.attrs))
+    for number, name in enumerate(names):
+        part = values.isel(kernel=slice(number * count, (number + 1) * count)).rename(kernel="site")
+        part = part.assign_coords(places)
+        out[name] = part.assign_attrs(vocabulary.attributes(name, per_gigatonne=per_gigatonne))
     return out
-
-
-def _contractions(kernels: xr.Dataset, names: list[str], degree: int) -> Array:
-    """Real coefficients (field, site, 2n) up to a degree; real orthonormal ones contract by a plain sum."""
-    rows = [kernels[f"{name}_coefficients"].transpose("site", "part", "coefficient").values for name in names]
-    cut = _transform.resized(np.stack(rows), degree)
-    return cut.reshape((len(names), cut.shape[1], -1))

@@ -5,12 +5,10 @@ import pandas as pd
 import xarray as xr
 
 from massfingerprint.errors import InputError
-from massfingerprint.sealevel.kernels import point_mass, sea_level_of
-from massfingerprint.sealevel.sites import taper
+from massfingerprint.sealevel.kernels import site_kernels
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import grid_of
-from massfingerprint.sphere.points import check_sites
 
 
 def range_within(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, *, tolerance: float = 1e-6) -> xr.Dataset:
@@ -39,23 +37,26 @@ def range_within(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, *,
     SiteError
         If the sites cannot be used.
     """
+    return range_of(site_kernels(prepared, sites, tolerance=tolerance, tapered=True), load)
+
+
+def range_of(kernels: xr.Dataset, load: xr.DataArray) -> xr.Dataset:
+    """The same from tapered kernels of the sites; load and errors as for :func:`range_within`."""
     if not isinstance(load, xr.DataArray) or set(load.dims) != {"source", "lat", "lon"}:
         raise InputError("load: must be a DataArray (source, lat, lon). Use spread_mass(...).")
-    table, grid = check_sites(sites), grid_of(load, argument="load")
+    grid = grid_of(load, argument="load")
     carried = load.transpose("source", "lat", "lon").values != 0.0
     for name, cells in zip(load["source"].values, carried, strict=True):
         if not cells.any():
             raise InputError(f"load: source {str(name)!r} carries no mass anywhere.")
-    degree, _ = _transform.degrees_and_orders(prepared.max_degree)
-    smooth = taper(degree, prepared.max_degree)
-    values = np.empty((2, carried.shape[0], len(table)))
-    for column, (lat, lon) in enumerate(table[["lat", "lon"]].to_numpy()):
-        point = point_mass(prepared, float(lat), float(lon))
-        here = smooth * sea_level_of(prepared, point, tolerance=tolerance, label=f"site at {lat:g}, {lon:g}")
-        field = grid.from_rings(_transform.synthesise(here, (grid.nlat, grid.nlon), grid.first_azimuth)) * 1e3
+    coefficients = kernels["relative_sea_level_coefficients"].transpose("site", "part", "coefficient")
+    values = np.empty((2, carried.shape[0], kernels.sizes["site"]))
+    for column, pairs in enumerate(coefficients.values):
+        here = _transform.complex_from_real(pairs)
+        field = grid.from_rings(_transform.synthesise(here, (grid.nlat, grid.nlon), grid.first_azimuth))
         for row, cells in enumerate(carried):
             values[:, row, column] = field[cells].min(), field[cells].max()
-    out = xr.Dataset(coords={"source": load["source"], "site": table["site"].to_numpy(dtype=object)})
+    out = xr.Dataset(coords={"source": load["source"], "site": kernels["site"].values})
     for name, part in zip(("lowest", "highest"), values, strict=True):
         attrs = {
             "units": "mm Gt-1",

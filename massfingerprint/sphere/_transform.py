@@ -102,6 +102,34 @@ def analyse(rings: Array, max_degree: int, first_azimuth: float) -> Complex:
     return out.reshape((*lead, -1))
 
 
+def adjoint_analyse(coefficients: Complex, shape: tuple[int, int], first_azimuth: float) -> Array:
+    """Weights (..., nlat, nlon) on cell-centred rings whose plain sum with a field is the inner product with its analysis.
+
+    For a field f and coefficients (..., n): sum(f * weights) = inner_product(analyse(f, their degree), coefficients).
+    """
+    lead, (nlat, nlon) = coefficients.shape[:-1], shape
+    max_degree, full = degree_of_count(coefficients.shape[-1]), nlat - 1
+    rows = resized(coefficients.reshape((-1, coefficients.shape[-1])), full)
+    out = np.empty((rows.shape[0], nlat, nlon))
+    for row, weights in zip(rows, out, strict=True):
+        ducc0.sht.adjoint_analysis_2d(
+            alm=row[None, : _orders_up_to(full, max_degree)],
+            map=weights[None],
+            spin=0,
+            lmax=full,
+            mmax=max_degree,
+            geometry="F1",
+            phi0=first_azimuth,
+            nthreads=options.threads(),
+        )
+    return out.reshape((*lead, nlat, nlon))
+
+
+def _orders_up_to(degree: int, order: int) -> int:
+    """How many coefficients of a triangle up to ``degree`` have orders up to ``order``."""
+    return index_of(degree, min(order, degree), degree) + 1
+
+
 def synthesise(coefficients: Complex, shape: tuple[int, int], first_azimuth: float) -> Array:
     """Fields (..., nlat, nlon) on cell-centred rings, north first and eastward, of coefficients (..., n)."""
     lead = coefficients.shape[:-1]

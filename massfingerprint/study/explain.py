@@ -202,14 +202,14 @@ def _per_gigatonne(folder: Folder, row: pd.Series) -> Trace:
         Input("lon", float(here["lon"]), "degrees_east"),
         Input("coefficients", f"{held} of {source} in patterns.nc", "mm Gt-1"),
     ]
-    near = float(here.sel(source=source)[f"{row['field']}_per_gigatonne_added_near_field"])
-    if near:
-        inputs.append(Input("near_field", near, "mm Gt-1"))
-    formula = "-sum over degree, order of (C cos(order lon) + S sin(order lon)) P(degree, order; lat), orthonormal"
-    if near:
-        formula += (
-            " - near_field (outline within 300 km: all degrees of its direct elastic effect, for those of the cells)"
-        )
+    near = here.sel(source=source)
+    formula = "-sum over degree, order of w(degree) (C cos(order lon) + S sin(order lon)) P(degree, order; lat), orthonormal; "
+    if int(near["near_field"]) == 1:
+        inputs.append(Input("near_field", float(near[f"{row['field']}_per_gigatonne_added_near_field"]), "mm Gt-1"))
+        formula += "w = 1; - near_field (all degrees of the outline's direct elastic effect, for those of the cells)"
+    else:
+        half = choices["max_degree"] // 2
+        formula += f"w = 1 up to degree {half}, then half a cosine to 0 above degree {choices['max_degree']}"
     origin = {
         "solved": f"sea-level equation to degree {choices['max_degree']}, rotation {choices['rotation']}, frame "
         f"{choices['reference_frame']}, ocean fraction at {choices['spacing']} degree",
@@ -217,7 +217,7 @@ def _per_gigatonne(folder: Folder, row: pd.Series) -> Trace:
         "outline": folder.provenance["outlines"][source],
         "bundled": folder.provenance["bundled"],
     }
-    spread = f"truncation {row['truncation']:+.3e} mm Gt-1 (change from half the degree); Love numbers about 1 %"
+    spread = f"truncation {row['truncation']:+.3e} mm Gt-1 (what the taper or the rings change); Love numbers about 1 %"
     return Trace(str(row["id"]), words, float(row["value"]), "mm Gt-1", spread, formula, inputs, origin)
 
 

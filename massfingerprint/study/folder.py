@@ -154,7 +154,7 @@ def pattern_data(study: Study) -> xr.Dataset:
 def site_data(study: Study) -> xr.Dataset:
     """What ``sites.nc`` holds: ``<field>_per_gigatonne_added...``, ``<field>...`` in time, ``<field>_rate...`` by window."""
     here, series, rates = study.at_sites, study.series, study.rates
-    fields = [str(name) for name in here.data_vars if f"{name}_tapered" in here]
+    fields = [str(name) for name in here.data_vars if f"{name}_near_field" in here]
     names = {}
     for label in map(str, here.data_vars):
         name = next((name for name in fields if label.startswith(name)), "")

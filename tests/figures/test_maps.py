@@ -184,6 +184,14 @@ def test_lines_to_names_run_through_no_marker_nor_name():
             assert own or not any(box.contains(x, y) for x, y in along)
 
 
+def test_a_map_of_what_matters_to_a_site_shows_land_through():
+    figure = drawn(field(depth=4.0), everywhere=True)
+    assert maps.KERNEL_SCALE in all_words(figure)
+    plain = drawn(field(depth=4.0))
+    faces = [{patch.get_facecolor() for patch in panel(one).patches} for one in (figure, plain)]
+    assert len(faces[1] - faces[0]) == 1  # the land's own colour
+
+
 def test_sites_stand_at_their_places():
     figure = drawn(sites=SITES)
     (line,) = [one for one in panel(figure).lines if one.get_gid() == "sites"]

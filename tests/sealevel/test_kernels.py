@@ -47,6 +47,16 @@ def test_kernels_give_what_the_forward_solve_gives_at_the_sites(problem, frame):
     )
 
 
+def test_tapered_kernels_give_the_tapered_values(problem):
+    """The taper sits at the site, in the kernel as in at_sites: 1e-8 of the largest value."""
+    prepared, load = problem
+    kernels = mf.site_kernels(prepared, SITES, outputs=KERNEL_FIELDS, tapered=True)
+    found, expected = mf.apply_kernels(kernels, load), forward(prepared, load)
+    for name in KERNEL_FIELDS:
+        want = expected[f"{name}_tapered"].transpose("source", "site")
+        np.testing.assert_allclose(found[name].values, want.values, rtol=0, atol=1e-8 * float(np.abs(want).max()))
+
+
 @pytest.mark.parametrize("rotation", [True, False])
 def test_without_rotation_too_and_in_metres(love, rotation):
     ocean = mf.ocean_fraction(3.0)
@@ -88,6 +98,35 @@ def test_the_field_is_what_a_gigatonne_there_does_here(problem):
     np.testing.assert_allclose(found.values, direct.values, rtol=1e-9)
     assert kernels["relative_sea_level"].attrs["units"] == "mm Gt-1"
     assert kernels["site_lat"].values.tolist() == SITES["lat"].tolist()
+
+
+def test_many_loads_are_summed_and_few_are_analysed_to_the_same(problem):
+    """Fifty months of mass: by weights on the cells; one of them: by its coefficients; 1e-12 of the largest."""
+    prepared, load = problem
+    rng = np.random.default_rng(9)
+    months = (load.isel(source=0, drop=True) * xr.DataArray(rng.normal(size=50), dims="time")).assign_attrs(
+        units="kg m-2"
+    )
+    kernels = mf.site_kernels(prepared, SITES, outputs=("relative_sea_level", "bedrock_up"))
+    whole = mf.apply_kernels(kernels, months)
+    for name in ("relative_sea_level", "bedrock_up"):
+        single = mf.apply_kernels(kernels, months.isel(time=[7]))[name]
+        assert whole[name].dims == ("time", "site")
+        np.testing.assert_allclose(
+            whole[name].isel(time=[7]).values, single.values, rtol=0, atol=1e-12 * float(np.abs(whole[name]).max())
+        )
+
+
+def test_a_lazy_load_stays_lazy(problem):
+    prepared, load = problem
+    kernels = mf.site_kernels(prepared, SITES)
+    lazy = mf.apply_kernels(kernels, load.chunk({"source": 1, "lat": 60}))["relative_sea_level"]
+    assert lazy.chunks is not None
+    now = mf.apply_kernels(kernels, load)["relative_sea_level"]
+    np.testing.assert_allclose(lazy.compute().values, now.values, rtol=0, atol=1e-12 * float(np.abs(now).max()))
+    spoiled = load.where(load["lat"] > 0.0).assign_attrs(load.attrs).chunk({"source": 1})
+    with pytest.raises(GridError, match="not finite"):
+        mf.apply_kernels(kernels, spoiled)["relative_sea_level"].compute()
 
 
 def test_inputs_are_left_alone(problem):

@@ -39,7 +39,12 @@ def recomputed(folder, found):
     source = source.removesuffix(" in patterns.nc")
     patterns = folder.patterns()
     pairs = sum(patterns[name].sel(source=source) for name in fields.split(" plus "))
-    return -to_shcoeffs(pairs).expand(lat=named["lat"], lon=named["lon"])
+    if "near_field" not in named:
+        degree = pairs["degree"]
+        pairs = pairs * (0.5 * (1.0 + np.cos(np.pi * ((degree - 8) / (17.0 - 8)).clip(0.0, 1.0))))  # from 8 to above 16
+    return -to_shcoeffs(pairs.transpose("part", "coefficient")).expand(lat=named["lat"], lon=named["lon"]) - named.get(
+        "near_field", 0.0
+    )
 
 
 def test_twenty_random_numbers_are_recomputed_from_their_trace(folder):
