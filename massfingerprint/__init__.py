@@ -29,6 +29,7 @@ if TYPE_CHECKING:
     from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
+    from massfingerprint.sealevel.streamed import write_fingerprints
     from massfingerprint.sealevel.within import range_within
     from massfingerprint.sphere.points import read_sites
     from massfingerprint.study.run import run_study
@@ -70,6 +71,7 @@ _HOMES = {
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
     "sum_sources": "mass.combine",
+    "write_fingerprints": "sealevel.streamed",
     "write_netcdf": "files.netcdf",
 }
 
@@ -108,6 +110,7 @@ __all__ = [
     "spread_mass",
     "sum_sources",
     "with_correlation",
+    "write_fingerprints",
     "write_netcdf",
 ]
 

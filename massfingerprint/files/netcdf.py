@@ -1,10 +1,12 @@
 """Datasets to NetCDF, whole or not at all; with the layout that the CF conventions want for names."""
 
 import os
-from collections.abc import Mapping
+from collections.abc import Callable, Iterator, Mapping
+from contextlib import contextmanager
 from pathlib import Path
 from typing import Any
 
+import netCDF4
 import numpy as np
 import xarray as xr
 
@@ -160,3 +162,51 @@ def _named(stored: xr.Dataset) -> xr.Dataset:
 
 def _text(value: Any) -> str:
     return value.decode("utf-8") if isinstance(value, bytes) else str(value)
+
+
+@contextmanager
+def netcdf_steps(path: str | os.PathLike[str], dim: str) -> Iterator[Callable[[xr.Dataset], None]]:
+    """Give a callable that appends datasets along a dimension of one NetCDF-4 file; the file is there whole or not at all.
+
+    Parameters
+    ----------
+    path : path
+        Target file; its folder must exist.
+    dim : str
+        Dimension along which steps are appended; each step has it with any length. Variables without it are written once.
+
+    Raises
+    ------
+    MissingFileError
+        If the folder does not exist.
+    """
+    with replacing(path) as temporary:
+        state: dict[str, int] = {"written": 0}
+
+        def append(step: xr.Dataset) -> None:
+            if state["written"] == 0:
+                plain = [name for name in step.variables if step[name].dtype.kind in "fiu"]
+                encoding: dict[Any, dict[str, Any]] = {name: {"_FillValue": None} for name in plain}
+                if step[dim].dtype.kind == "M":
+                    encoding[dim] = {"units": "days since 1970-01-01", "dtype": "f8"}
+                step.to_netcdf(temporary, engine="netcdf4", format="NETCDF4", encoding=encoding, unlimited_dims=[dim])
+            else:
+                _append(temporary, step, dim, state["written"])
+            state["written"] += step.sizes[dim]
+
+        yield append
+        if state["written"] == 0:
+            raise MissingFileError(f"{path}: no step was given, nothing is written. Append at least one.")
+
+
+def _append(path: Path, step: xr.Dataset, dim: str, start: int) -> None:
+    """Write the variables of a step that have the dimension behind those that are there."""
+    with netCDF4.Dataset(path, "a") as stored:
+        for name, variable in step.variables.items():
+            if dim not in variable.dims:
+                continue
+            values: Any = variable.values
+            if variable.dtype.kind == "M":
+                values = (values - np.datetime64("1970-01-01")) / np.timedelta64(1, "D")
+            place = tuple(slice(start, start + step.sizes[dim]) if d == dim else slice(None) for d in variable.dims)
+            stored[str(name)][place] = values

@@ -6,15 +6,25 @@ Seconds on a shared machine mean little; the ratios are of things timed in turn 
 import argparse
 import os
 import platform
+import re
+import shutil
 import statistics
 import subprocess
 import sys
+import tempfile
 import time
+from pathlib import Path
 
 import numpy as np
+import pandas as pd
+import xarray as xr
 
 import massfingerprint as mf
 from massfingerprint.sphere import _transform
+from massfingerprint.sphere.harmonics import analyse, to_gravity
+from tests.timings.textbook import Textbook
+
+SITE = pd.DataFrame({"site": ["Hudson"], "lat": [40.7], "lon": [-74.0]})
 
 
 def seconds(action, repeats):
@@ -78,6 +88,108 @@ def solving(max_degree, spacing, repeats):
     ]
 
 
+def against_the_textbook(max_degree, spacing):
+    """One whole solve of each at a relative residual of 1e-8, grids prepared."""
+    ocean, love = mf.ocean_fraction(spacing), mf.love_numbers(max_degree=max_degree)
+    prepared = mf.prepare_solver(ocean, love, max_degree=max_degree)
+    load = mf.spread_mass(mf.regions("greenland"), ocean)[0]
+    ice = to_gravity(analyse(load, max_degree=min(max_degree, prepared.grid.band_limit)))
+    mf.solve_fingerprints(prepared, load)
+    own = seconds(lambda: mf.solve_fingerprints(prepared, load), 3)
+    rows = []
+    for backend in ("shtools", "ducc"):
+        problem = Textbook(ocean, love, max_degree, backend, len(os.sched_getaffinity(0)))
+        taken = seconds(lambda problem=problem: problem.solve(ice, tolerance=1e-8), 1)
+        name = f"textbook iteration, pyshtools with {backend}, degree {max_degree}"
+        rows.append((name, f"{taken:.3f} s", f"{taken / own:.1f} x solve_fingerprints"))
+    return rows
+
+
+def many(count):
+    """Sources at degree 512 one after the other in one call, per source, in pairs."""
+    ocean = mf.ocean_fraction(0.25)
+    prepared = mf.prepare_solver(ocean, mf.love_numbers(max_degree=512), max_degree=512)
+    one = mf.spread_mass(mf.regions("greenland"), ocean)
+    load = xr.concat([one] * count, dim="source").assign_attrs(one.attrs)
+    mf.solve_fingerprints(prepared, one)
+    rings, grid = prepared.grid.to_rings(one.values[0]), prepared.grid
+    alm = _transform.analyse(rings, 512, grid.first_azimuth)
+    pair = seconds(
+        lambda: (
+            _transform.synthesise(alm, (grid.nlat, grid.nlon), grid.first_azimuth),
+            _transform.analyse(rings, 512, grid.first_azimuth),
+        ),
+        9,
+    )
+    each = seconds(lambda: mf.solve_fingerprints(prepared, load), 1) / count
+    kernel = seconds(lambda: mf.site_kernels(prepared, SITE), 3)
+    return [
+        (f"{count} sources in one call, degree 512, each", f"{each:.3f} s", f"{each / pair:.1f} pairs"),
+        ("kernel of one site, degree 512", f"{kernel:.3f} s", f"{kernel / pair:.1f} pairs"),
+    ]
+
+
+def months():
+    """264 months of mass at half a degree at 100 sites, kernels at hand."""
+    ocean = mf.ocean_fraction(0.5)
+    prepared = mf.prepare_solver(ocean, mf.love_numbers(max_degree=256), max_degree=256)
+    one = mf.site_kernels(prepared, SITE)
+    sites = [f"site {n}" for n in range(100)]
+    kernels = xr.concat([one] * 100, dim="site", data_vars="minimal", combine_attrs="override").assign_coords(
+        site=sites
+    )
+    values = np.random.default_rng(1).normal(size=(264, 360, 720))
+    coords = {"lat": ocean["lat"], "lon": ocean["lon"]}
+    load = xr.DataArray(values, dims=("time", "lat", "lon"), coords=coords, attrs={"units": "kg m-2"})
+    taken = seconds(lambda: mf.apply_kernels(kernels, load), 1)
+    return [("264 months at 0.5 degree, 100 sites, by kernels", f"{taken:.2f} s", "")]
+
+
+def demo():
+    """Stages of the demonstration study in a fresh process, nothing kept."""
+    with tempfile.TemporaryDirectory() as place:
+        for path in Path("data_small").glob("demo_*"):
+            shutil.copy(path, place)
+        command = ["study", f"{place}/demo_study.toml", "--verbose"]
+        code = f"from massfingerprint.cli import main; raise SystemExit(main({command!r}))"
+        begin = time.perf_counter()
+        done = subprocess.run([sys.executable, "-c", code], check=True, capture_output=True, text=True)
+        whole = time.perf_counter() - begin
+    stages = re.findall(r"^([a-z ]+?) +(\d+\.\d+) s$", done.stderr, flags=re.MULTILINE)
+    rows = [(f"demo study: {name}", f"{float(taken):.2f} s", f"{float(taken) / whole:.0%}") for name, taken in stages]
+    return [*rows, ("demo study: whole process", f"{whole:.1f} s", "")]
+
+
+GROWTH = """
+import resource, sys, time
+import massfingerprint as mf
+degree = int(sys.argv[1])
+spacing = 180.0 / max(180, {64: 180, 128: 180, 256: 360, 512: 720, 1024: 1440, 2048: 2880}[degree])
+ocean = mf.ocean_fraction(spacing)
+love = mf.love_numbers(max_degree=degree)
+begin = time.perf_counter(); prepared = mf.prepare_solver(ocean, love, max_degree=degree); prepare = time.perf_counter() - begin
+load = mf.spread_mass(mf.regions("greenland"), ocean)
+mf.solve_fingerprints(prepared, load)
+begin = time.perf_counter(); answer = mf.solve_fingerprints(prepared, load); solve = time.perf_counter() - begin
+from massfingerprint.sphere import _transform
+grid, rings = prepared.grid, prepared.grid.to_rings(load.values[0])
+begin = time.perf_counter()
+alm = _transform.analyse(rings, min(degree, grid.band_limit), grid.first_azimuth)
+_transform.synthesise(alm, (grid.nlat, grid.nlon), grid.first_azimuth)
+pair = time.perf_counter() - begin
+peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1e6
+print(f"{degree:6d} {spacing:9.4f} {prepare:10.2f} {solve:10.3f} {solve / pair:8.1f} {int(answer.rounds[0]):7d} {peak:10.2f}")
+"""
+
+
+def growth():
+    """Time and peak memory against degree, each in a fresh process."""
+    print("degree   spacing  prepare s    solve s    pairs  rounds    peak GB")
+    for degree in (64, 128, 256, 512, 1024, 2048):
+        done = subprocess.run([sys.executable, "-c", GROWTH, str(degree)], check=True, capture_output=True, text=True)
+        print(done.stdout, end="")
+
+
 def love(repeats):
     recompute = seconds(lambda: mf.love_numbers(max_degree=2048, recompute=True), repeats)
     read = seconds(lambda: mf.love_numbers(max_degree=2048), repeats)
@@ -96,14 +208,20 @@ def first_answer():
 def main():
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--repeats", type=int, default=5)
+    parser.add_argument("--growth", action="store_true", help="only the table of time and memory against degree")
     options = parser.parse_args()
     print(f"{platform.machine()}, {len(os.sched_getaffinity(0))} processors, Python {platform.python_version()}")
+    if options.growth:
+        growth()
+        return
     rows = start_up(options.repeats)
     for degree, spacing in ((128, 1.0), (512, 0.25)):
         rows += solving(degree, spacing, options.repeats)
-    rows += love(max(1, options.repeats // 2)) + first_answer()
+    rows += against_the_textbook(128, 1.0) + against_the_textbook(512, 0.25)
+    rows += many(60 if options.repeats > 1 else 4) + months()
+    rows += love(max(1, options.repeats // 2)) + first_answer() + demo()
     for row in rows:
-        print("{:48} {:>10}  {}".format(*row))
+        print("{:58} {:>10}  {}".format(*row))
 
 
 if __name__ == "__main__":
