@@ -143,38 +143,49 @@ def solve(
         Converged or not.
     """
     ice_mass = float(ice[0].real) * _ROOT
-    state = _State(np.zeros_like(ice), ice, operator.sea_level(ice, ice_mass)[0])
+    sea_level, residual = np.zeros_like(ice), operator.sea_level(ice, ice_mass)[0]
     kept: list[_State] = []
-    relative, rounds = np.inf, 0
+    weights, relative, rounds = np.ones(1), np.inf, 0
     while rounds < (max_rounds or MAX_ROUNDS) and relative > tolerance:
-        sea_level = state.sea_level + correction(state.residual)
+        sea_level = sea_level + correction(residual)
         load = operator.ocean_load(sea_level)
         load += ice
-        following, _ = operator.sea_level(load, ice_mass)
-        size = _norm(following)
-        following -= sea_level
-        kept = [*kept[1 - _KEPT :], _State(sea_level, load, following)]
-        state, rounds = _smallest(kept), rounds + 1
-        relative = _norm(state.residual) / size if size > 0.0 else 0.0
-    _, uniform = operator.sea_level(state.load, ice_mass)
+        left, _ = operator.sea_level(load, ice_mass)
+        size = _norm(left)
+        left -= sea_level
+        kept = [*kept[1 - _KEPT :], _State(sea_level, load, left)]
+        weights, rounds = _smallest([state.residual for state in kept]), rounds + 1
+        sea_level = _sum(weights, [state.sea_level for state in kept])
+        residual = _sum(weights, [state.residual for state in kept])
+        relative = _norm(residual) / size if size > 0.0 else 0.0
+    load = _sum(weights, [state.load for state in kept])
+    _, uniform = operator.sea_level(load, ice_mass)
     weight = _norm(ice)
-    unbalanced = abs(float(state.load[0].real)) / weight if weight > 0.0 else abs(float(state.load[0].real))
-    return Solution(state.load, uniform, rounds, relative, unbalanced, bool(relative <= tolerance))
+    unbalanced = abs(float(load[0].real)) / weight if weight > 0.0 else abs(float(load[0].real))
+    return Solution(load, uniform, rounds, relative, unbalanced, bool(relative <= tolerance))
 
 
-def _smallest(kept: list[_State]) -> _State:
-    """Combination of states (their weights add to 1) whose residual is smallest; the last one alone if there is no other."""
-    last = kept[-1]
-    steps = [state.residual - last.residual for state in kept[:-1]]
+def _smallest(residuals: list[Complex]) -> Array:
+    """Weights, adding to 1, of the combination of states whose residual is smallest; the last state alone while there are few."""
+    last = residuals[-1]
+    alone = np.append(np.zeros(len(residuals) - 1), 1.0)
+    steps = [residual - last for residual in residuals[:-1]]
     sizes = np.array([_norm(step) for step in steps])
-    if not steps or not (sizes > 0.0).all():
-        return last
+    if len(steps) < _KEPT - 1 or not (sizes > 0.0).all():
+        return alone
     gram = np.array([[inner_product(a, b) for b in steps] for a in steps]) / np.outer(sizes, sizes)
-    right = np.array([-inner_product(a, last.residual) for a in steps]) / sizes
-    weights = np.linalg.lstsq(gram, right, rcond=1e-12)[0] / sizes
-    out = _State(last.sea_level.copy(), last.load.copy(), last.residual.copy())
-    for weight, state, step in zip(weights, kept[:-1], steps, strict=True):
-        out.sea_level += weight * (state.sea_level - last.sea_level)
-        out.load += weight * (state.load - last.load)
-        out.residual += weight * step
+    right = np.array([-inner_product(a, last) for a in steps]) / sizes
+    others = np.linalg.lstsq(gram, right, rcond=1e-12)[0] / sizes
+    return np.append(others, 1.0 - others.sum())
+
+
+def _sum(weights: Array, parts: list[Complex]) -> Complex:
+    """Weighted sum of states, by their differences from the last: weights add to 1."""
+    if len(parts) == 1:
+        return parts[0]
+    out = parts[-1].copy()
+    for weight, part in zip(weights[:-1], parts[:-1], strict=True):
+        step = part - parts[-1]
+        step *= weight
+        out += step
     return out

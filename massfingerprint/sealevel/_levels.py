@@ -10,7 +10,6 @@ from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.linalg import lu_factor, lu_solve
 
 from massfingerprint.sealevel._equation import Correction, Operator
 from massfingerprint.sphere import _transform
@@ -30,19 +29,19 @@ def _damping(operator: Operator) -> Array:
 
 @dataclass(frozen=True)
 class Direct:
-    """All degrees of a coarse problem at once, by factorising its dense matrix; made when first used."""
+    """All degrees of a coarse problem at once, by the inverse of its dense matrix (condition about 2); made when first used."""
 
     operator: Operator
 
     @cached_property
-    def _factors(self) -> tuple[Array, NDArray[np.int32]]:
+    def _inverse(self) -> Array:
         count = self._pack(self.operator.ocean).size
         matrix = np.empty((count, count))
         for column in range(count):
             unit = np.zeros(count)
             unit[column] = 1.0
             matrix[:, column] = unit - self._pack(self.operator.homogeneous(self._unpack(unit)))
-        return lu_factor(matrix)
+        return np.asarray(np.linalg.inv(matrix), dtype=np.float64)
 
     def _pack(self, coefficients: Complex) -> Array:
         """Independent real numbers of coefficients: imaginary parts of order 0 are none."""
@@ -57,7 +56,8 @@ class Direct:
 
     def __call__(self, residual: Complex) -> Complex:
         """Error of the coarse state that left this residual, exact."""
-        return self._unpack(lu_solve(self._factors, self._pack(residual)))
+        # not BLAS, whose threads go on spinning and take the processors from the transforms
+        return self._unpack(np.einsum("ij,j->i", self._inverse, self._pack(residual)))
 
 
 @dataclass(frozen=True)

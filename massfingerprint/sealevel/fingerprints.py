@@ -64,8 +64,12 @@ def _check_choices(outputs: tuple[str, ...], frame: str, tolerance: float, on_fa
 def _field_coefficients(prepared: Prepared, name: str, frame: str, solution: Solution) -> Complex:
     """Coefficients (n,) in m of one field, each from its own sum."""
     degree, order = _transform.degrees_and_orders(prepared.max_degree)
-    kind = "geoid" if name == "sea_surface" else name
-    factors = coefficient_factors(prepared.love, kind, degree, order, rotation=prepared.rotation, reference_frame=frame)
+    if name == "relative_sea_level":
+        factors = prepared.operator.response
+    else:
+        kind = "geoid" if name == "sea_surface" else name
+        turning = prepared.rotation
+        factors = coefficient_factors(prepared.love, kind, degree, order, rotation=turning, reference_frame=frame)
     out = factors * solution.load
     if name in ("relative_sea_level", "sea_surface"):
         out[0] += solution.uniform * np.sqrt(4.0 * np.pi)

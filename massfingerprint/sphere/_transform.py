@@ -234,5 +234,7 @@ class GaussLegendreRings:
 def inner_product(first: Complex, second: Complex) -> float:
     """Integral over the unit sphere of the product of two real fields given by coefficients (n,) of one degree."""
     zonal = degree_of_count(first.size) + 1
-    whole = np.vdot(first, second).real
-    return float(2.0 * whole - np.vdot(first[:zonal], second[:zonal]).real)
+    one, two = (np.ascontiguousarray(c).view(np.float64) for c in (first, second))
+    # not BLAS: its threads go on spinning after the call and take the processors from the transforms
+    whole, low = (np.einsum("i,i->", one[:end], two[:end]) for end in (None, 2 * zonal))
+    return float(2.0 * whole - low)
