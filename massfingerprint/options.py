@@ -1,12 +1,14 @@
 """Settings of the running process: the only home of the thread count and of the memory limit."""
 
 import os
+import threading
 from collections.abc import Iterator
 from contextlib import AbstractContextManager, contextmanager
 
 from massfingerprint.arguments import whole_number
 
 _settings: dict[str, int] = {}
+_own = threading.local()
 
 
 def _available_processors() -> int:
@@ -16,7 +18,18 @@ def _available_processors() -> int:
 
 def threads() -> int:
     """Return how many threads a transform may use (default: the processors this process may run on)."""
-    return _settings.get("threads", _available_processors())
+    return getattr(_own, "threads", None) or _settings.get("threads", _available_processors())
+
+
+@contextmanager
+def one_thread() -> Iterator[None]:
+    """Inside, transforms of the calling thread use one thread: many of them run beside each other instead."""
+    before = getattr(_own, "threads", None)
+    _own.threads = 1
+    try:
+        yield
+    finally:
+        _own.threads = before
 
 
 def memory_limit() -> int | None:

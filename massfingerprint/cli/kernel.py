@@ -12,6 +12,7 @@ import xarray as xr
 
 from massfingerprint.cli._progress import progress
 from massfingerprint.cli._tables import as_json, rendered
+from massfingerprint.constants import FRESH_WATER_DENSITY
 from massfingerprint.earth.green import LEAST_DEGREE
 from massfingerprint.earth.love import love_numbers
 from massfingerprint.errors import FolderError
@@ -133,6 +134,24 @@ def _draw(folder: Path, kernels: xr.Dataset, tables: dict[str, pd.DataFrame], si
                 write_binary(look.file_content(figure, kind), folder / f"{short}_{name}.{kind}")
 
 
+def _strip(folder: Path, tables: dict[str, pd.DataFrame], load: xr.DataArray, small: str) -> None:
+    """One strip a site: a metre of water lost evenly from each region, added up."""
+    from massfingerprint.figures import look, strip  # noqa: PLC0415  plotting only where it is asked for
+
+    # a cell that lies wholly in the region carries kg m-2 per gigatonne: a metre of water is 1000 kg m-2
+    density = load.max(("lat", "lon"))
+    metre = {
+        str(name): FRESH_WATER_DENSITY.value / float(value)
+        for name, value in zip(load["source"].values, density, strict=True)
+    }
+    rows = {site: table.set_index("source")["relative sea level [mm]"] / _PER for site, table in tables.items()}
+    frame = pd.DataFrame({site: row * pd.Series(metre) for site, row in rows.items()}).T
+    with look.style():
+        figure = strip.cumulative_strip(frame, title="A metre of water from every region, added up", caption=small)
+    for kind in ("png", "pdf"):
+        write_binary(look.file_content(figure, kind), folder / f"strip.{kind}")
+
+
 @click.command(name="kernel")
 @click.option(
     "--sites",
@@ -198,6 +217,7 @@ def command(sites_file: Path, named: tuple[str, ...], **options: Any) -> None:
         write_cf_netcdf(kernels.plain, options["netcdf_file"], attributes={**kernels.plain.attrs, **about})
     if options["folder"] is not None:
         _draw(options["folder"], kernels.smooth, tables, sites, small)
+        _strip(options["folder"], tables, load, small)
 
 
 def _print(tables: dict[str, pd.DataFrame], prepared: Prepared, *, as_data: bool) -> None:

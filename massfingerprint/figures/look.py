@@ -2,7 +2,7 @@
 
 Two-sided palette: ochre for less than the global mean, teal for more, white at 1 x. Equal steps of lightness on both sides (built
 in the OKLab space of Ottosson 2020), so that it prints in grey by size and is told apart by colour-blind readers by hue and side.
-Mass sources: one hue per family (Greenland blue, Antarctica violet, glaciers ochre to green, other grey), neighbours differ.
+Mass sources: one hue per family (Greenland blue, Antarctica violet, its west magenta, glaciers ochre to green, other grey), neighbours differ.
 """
 
 import io
@@ -29,6 +29,7 @@ RATIO_COLOURS = LinearSegmentedColormap.from_list("less_or_more", [*_LESS, "#f5f
 
 _FAMILIES = {
     "greenland": ("#1f5a8c", "#5b93c7", "#9cc3e6", "#2f7bb5", "#7fb0da", "#134468", "#b9d6ee"),
+    "west_antarctica": ("#8c2f62", "#c0679a", "#e2abcb", "#a64a7d", "#d48ab3"),
     "antarctic": ("#5a3d8c", "#9077c0", "#c3b3e2", "#74559f", "#aa93d3", "#402a68", "#d8cdee"),
     "glaciers": ("#8a5a12", "#c28f3d", "#e0bf85", "#5f7f2e", "#93b05c", "#c2d59a", "#a8442f", "#d98a70", "#6d3b1f"),
     "": ("#4d4d4d", "#8c8c8c", "#bfbfbf", "#2e6f66", "#79b5ab"),

@@ -1,5 +1,7 @@
 """Fingerprints: the patterns of relative sea level, sea surface, geoid and bedrock that a load leaves."""
 
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
 from typing import Any
 
 import numpy as np
@@ -149,8 +151,9 @@ def solve_fingerprints(
     band = min(grid.band_limit, prepared.max_degree)
     flat = load.values.reshape((-1, grid.nlat, grid.nlon))
     store = _Store(names, flat.shape[0], prepared.max_degree, grid)
-    for position, values in enumerate(flat):
-        ice = _transform.analyse(grid.to_rings(values) * scale, band, grid.first_azimuth)
+
+    def one(position: int) -> None:
+        ice = _transform.analyse(grid.to_rings(flat[position]) * scale, band, grid.first_azimuth)
         solution = solve(
             prepared.operator,
             _transform.resized(ice, prepared.max_degree),
@@ -162,6 +165,8 @@ def solve_fingerprints(
             place = {str(d): load[d].values[i] if d in load.coords else i for d, i in zip(lead, index, strict=True)}
             _refuse_unconverged(solution, place, tolerance)
         store.put(position, prepared, solution, reference_frame)
+
+    _for_each(one, flat.shape[0])
     out = store.dataset(load, per_gigatonne)
     out["load_extent"] = (
         (*lead, "lat", "lon"),
@@ -169,6 +174,28 @@ def solve_fingerprints(
         {"long_name": "1 in cells that carry load", "units": "1"},
     )
     return out.assign_attrs(_attributes(prepared, reference_frame, band))
+
+
+def _for_each(one: Callable[[int], None], count: int) -> None:
+    """Solve loads beside each other, a thread each, where there are enough; else one after the other with all threads."""
+    threads = options.threads()
+    if threads == 1 or count < 2 * threads:
+        for position in range(count):
+            one(position)
+        return
+
+    def alone(position: int) -> None:
+        with options.one_thread():
+            one(position)
+
+    one(0)  # what is made when first used is made once
+    with ThreadPoolExecutor(threads) as pool:
+        try:
+            for _ in pool.map(alone, range(1, count)):
+                pass
+        except BaseException:
+            pool.shutdown(cancel_futures=True)  # an interrupt or a failure does not wait for the rest
+            raise
 
 
 def _attributes(prepared: Prepared, frame: str, load_degree: int) -> dict[str, Any]:

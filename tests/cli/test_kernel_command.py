@@ -80,7 +80,7 @@ def test_figures_of_every_site(sites, tmp_path, capsys):
     assert "there is no folder" in capsys.readouterr().err
     folder.mkdir()
     assert main(["kernel", "--sites", str(sites), *REGIONS, *QUICK, "--figures", str(folder)]) == 0
-    names = [f"hudson_{what}.{kind}" for what in ("kernel", "per_gigatonne") for kind in ("pdf", "png")]
+    names = [f"{what}.{kind}" for what in ("hudson_kernel", "hudson_per_gigatonne", "strip") for kind in ("pdf", "png")]
     assert sorted(p.name for p in folder.iterdir()) == names
 
 
