@@ -2,7 +2,7 @@
 
 Two-sided palette: ochre for less than the global mean, teal for more, white at 1 x. Equal steps of lightness on both sides (built
 in the OKLab space of Ottosson 2020), so that it prints in grey by size and is told apart by colour-blind readers by hue and side.
-Mass sources: one hue per family (Greenland blue, Antarctica violet, its west magenta, glaciers ochre to green, other grey), neighbours differ.
+Mass sources: one hue per family (Greenland blue, Antarctica violet, its west magenta, glaciers ochre to green, other grey).
 """
 
 import io
