@@ -10,6 +10,7 @@ if TYPE_CHECKING:
     from massfingerprint.earth.frames import in_frame
     from massfingerprint.earth.love import love_numbers
     from massfingerprint.files.netcdf import write_netcdf
+    from massfingerprint.load.modes import load_modes
     from massfingerprint.load.ocean import ocean_fraction
     from massfingerprint.load.regions import disc, read_regions, region_names, regions
     from massfingerprint.load.retained import retain_on_land
@@ -46,6 +47,7 @@ _HOMES = {
     "covariance": "mass.covariance",
     "disc": "load.regions",
     "in_frame": "earth.frames",
+    "load_modes": "load.modes",
     "love_numbers": "earth.love",
     "near_field": "sealevel.nearfield",
     "ocean_fraction": "load.ocean",
@@ -85,6 +87,7 @@ __all__ = [
     "covariance",
     "disc",
     "in_frame",
+    "load_modes",
     "love_numbers",
     "near_field",
     "ocean_fraction",

@@ -1,7 +1,7 @@
 """The sea-level equation as a textbook iterates it, with pyshtools on Driscoll-Healy grids: what the solver is timed against.
 
 Start from the barystatic rise, form the product with the ocean on the grid, expand, apply the response, add the uniform part, until
-the relative change is below the tolerance. Source: Farrell & Clark 1976, as iterated in many lecture notes (common practice).
+the relative change is below the tolerance. Source: Farrell & Clark 1976, as usually iterated (common practice).
 """
 
 import numpy as np
