@@ -34,8 +34,8 @@ def peak(count, limit="none"):
 
 
 def test_peak_memory_grows_by_load_and_results_alone():
-    """10 and 40 sources in fresh processes: less than 5 % of the peak is unexplained by load and results."""
-    (few, load_few, own_few), (many, load_many, own_many) = peak(10), peak(40)
+    """10 and 60 sources in fresh processes: less than 5 % of the peak is unexplained by load and results."""
+    (few, load_few, own_few), (many, load_many, own_many) = peak(10), peak(60)
     unexplained = (many - few) - (load_many - load_few) - (own_many - own_few)
     assert unexplained < 0.05 * many
 
