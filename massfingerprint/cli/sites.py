@@ -22,7 +22,7 @@ from massfingerprint.mass.intervals import shown
 from massfingerprint.mass.published import published_rates
 from massfingerprint.mass.scope import check_scope
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
-from massfingerprint.sealevel.nearfield import WITHIN, add_near_field, near_field
+from massfingerprint.sealevel.nearfield import WITHIN, add_near_field, near_field, smoothed
 from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
@@ -102,7 +102,7 @@ def _answer(rates: pd.DataFrame, sites_file: Path, max_degree: int, spacing: flo
     coarse = prepared
     if max_degree > _RANGE_DEGREE:
         coarse = prepare_solver(ocean, love_numbers(max_degree=_RANGE_DEGREE), max_degree=_RANGE_DEGREE)
-    here = add_near_field(at_sites(patterns, sites), near_field(prepared, outlines, load, sites))
+    here = smoothed(add_near_field(at_sites(patterns, sites), near_field(prepared, outlines, load, sites)))
     return Answer(rates, prepared, here, range_within(coarse, load, sites))
 
 
@@ -120,7 +120,6 @@ def _table(answer: Answer) -> pd.DataFrame:
     out["ratio to global mean [1]"] = sea.sum(axis=0) / mean if mean else np.nan
     out["vertical land motion, elastic [mm yr-1]"] = answer.by_source("bedrock_up").sum(axis=0)
     out["truncation [mm yr-1]"] = answer.by_source("relative_sea_level_truncation").sum(axis=0)
-    out["total tapered [mm yr-1]"] = answer.by_source("relative_sea_level_tapered").sum(axis=0)
     lowest, highest = answer.range_by_source()
     for source, low, high in zip(answer.rates["source"], lowest, highest, strict=True):
         out[f"{source} lowest [mm yr-1]"], out[f"{source} highest [mm yr-1]"] = low, high
@@ -204,7 +203,7 @@ def _notes(answer: Answer) -> list[str]:
         "split over them; Love numbers add about 1 %. Where within a source the mass was lost is not in the table, it is spread "
         "evenly over its ice; if elsewhere: lowest and highest total if each source's mass sat in one cell of it. ratio to mean: "
         "total over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
-        f"{answer.patterns.attrs['reference_frame']}. truncation: change of the total from degree {degree // 2} to {degree}. "
+        f"{answer.patterns.attrs['reference_frame']}. truncation: what fading out degrees {degree // 2} to {degree} takes off. "
         f"Within {WITHIN:g} km of ice the value has the near field of its outline in it, all degrees; not resolved: the outline "
         "named is too coarse there."
     )

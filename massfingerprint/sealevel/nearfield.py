@@ -243,3 +243,28 @@ def add_near_field(values: xr.Dataset, near: xr.Dataset) -> xr.Dataset:
     out["resolved"] = xr.where(added, near["resolved"], 1).astype(np.int8).assign_attrs(units="1", long_name=words)
     out["distance_to_load"] = near["distance_to_outline"]
     return out
+
+
+def smoothed(values: xr.Dataset) -> xr.Dataset:
+    """Site values without the ripple of the highest degrees: tapered where no near field completes them.
+
+    Parameters
+    ----------
+    values : Dataset (source, site)
+        From :func:`add_near_field`.
+
+    Returns
+    -------
+    Dataset (source, site)
+        ``<name>`` the tapered or completed value; ``<name>_truncation`` the plain value minus the tapered one, or the step of the
+        near field's integral; no ``<name>_tapered``.
+    """
+    out = values
+    for name in (name for name in NEAR_FIELDS if name in values):
+        smooth, plain = values[f"{name}_tapered"], values[name]
+        change = xr.where(values["near_field"] == 1, values[f"{name}_truncation"], plain - smooth)
+        words = f"{name.replace('_', ' ')}: untapered minus tapered, or the step of the near field's integral"
+        out = out.drop_vars(f"{name}_tapered")
+        out[name] = smooth.assign_attrs(plain.attrs)
+        out[f"{name}_truncation"] = change.assign_attrs(units=plain.attrs["units"], long_name=words)
+    return out

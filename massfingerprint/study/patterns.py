@@ -17,7 +17,7 @@ from massfingerprint.files.arrays import fetch, fingerprint_of, store
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.fingerprints import FIELDS, solve_fingerprints
-from massfingerprint.sealevel.nearfield import add_near_field, near_field
+from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
 from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
@@ -192,24 +192,9 @@ def site_patterns(recipe: Recipe, problem: Problem, solved: Solved, inputs: Inpu
         out[f"sea_surface{end}"] = (level + up).assign_attrs(units=level.attrs["units"], long_name=words)
     frame = recipe.output.reference_frame
     near = near_field(problem.prepared, inputs.outlines, solved.load, sites, reference_frame=frame)
-    out = _smoothed(add_near_field(out, near))
+    out = smoothed(add_near_field(out, near))
     coarse = problem.prepared
     if coarse.max_degree > _RANGE_DEGREE:
         love = love_numbers(recipe.earth.model, max_degree=_RANGE_DEGREE)
         coarse = prepare_solver(problem.ocean, love, max_degree=_RANGE_DEGREE, rotation=recipe.earth.rotation)
     return out.merge(range_within(coarse, solved.load, sites), compat="equals", combine_attrs="override")
-
-
-def _smoothed(values: xr.Dataset) -> xr.Dataset:
-    """Site values without the ripple of the highest degrees: tapered where no near field completes them."""
-    out = values
-    for name in ("relative_sea_level", "sea_surface", "bedrock_up"):
-        smooth, plain = values[f"{name}_tapered"], values[name]
-        change = xr.where(values["near_field"] == 1, values[f"{name}_truncation"], plain - smooth)
-        words = {
-            "long_name": f"{name.replace('_', ' ')}: untapered minus tapered, or the step of the near field's integral"
-        }
-        out = out.drop_vars(f"{name}_tapered")
-        out[name] = smooth.assign_attrs(plain.attrs)
-        out[f"{name}_truncation"] = change.assign_attrs(units=plain.attrs["units"], **words)
-    return out
