@@ -23,7 +23,7 @@ from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.regions import region_names, regions
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
-from massfingerprint.sealevel.nearfield import add_near_field, near_field
+from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_of
 from massfingerprint.sphere.points import read_sites
@@ -75,7 +75,7 @@ def _values(
     found, smooth = apply_kernels(kernels.plain, load), apply_kernels(kernels.smooth, load)
     for name in _FIELDS:
         found[f"{name}_tapered"], found[f"{name}_truncation"] = smooth[name], found[name] - smooth[name]
-    whole = add_near_field(found, near_field(prepared, outlines, load, sites))
+    whole = smoothed(add_near_field(found, near_field(prepared, outlines, load, sites)))
     return whole.merge(range_of(kernels.smooth, load), compat="override")
 
 
@@ -87,12 +87,12 @@ def _table(values: xr.Dataset, site: str, mean: float) -> pd.DataFrame:
         {
             "site": site,
             "source": [str(name) for name in here["source"].values],
-            "relative sea level [mm]": -here["relative_sea_level_tapered"].values * _PER,
-            "ratio to global mean [1]": -here["relative_sea_level_tapered"].values / mean,
+            "relative sea level [mm]": -here["relative_sea_level"].values * _PER,
+            "ratio to global mean [1]": -here["relative_sea_level"].values / mean,
             "lowest [mm]": np.minimum(*ends),
             "highest [mm]": np.maximum(*ends),
-            "geocentric sea level, CM [mm]": -here["sea_surface_tapered"].values * _PER,
-            "vertical land motion, elastic [mm]": -here["bedrock_up_tapered"].values * _PER,
+            "geocentric sea level, CM [mm]": -here["sea_surface"].values * _PER,
+            "vertical land motion, elastic [mm]": -here["bedrock_up"].values * _PER,
             "near field": np.where(
                 here["resolved"].values == 0, "too coarse", np.where(here["near_field"].values == 1, "in it", "")
             ),

@@ -10,7 +10,7 @@ from massfingerprint.study.inputs import Inputs
 from massfingerprint.study.patterns import SITE_FIELDS
 from massfingerprint.study.recipe import Recipe
 
-_PAIRS_A_SOLVE = 17  # plain iteration to 1e-8, a pair on the rings of the solver
+_PAIRS_A_SOLVE = 5  # rounds to 1e-8, a pair on the rings of the solver each, and their corrections
 _PAIRS_A_SOURCE = 3  # spreading, analysis, fields
 _SECONDS_A_FIGURE = 0.5
 _LIBRARIES = 350e6  # bytes that the libraries take by themselves
