@@ -61,6 +61,46 @@ VARIABLES: dict[str, Variable] = {
         "vertical land motion, elastic, present-day",
         "elastic vertical motion of the solid surface",
     ),
+    "bedrock_north": Variable(
+        "m", "mm Gt-1", "north", "land motion north, elastic", "elastic motion of the solid surface to the north"
+    ),
+    "bedrock_east": Variable(
+        "m", "mm Gt-1", "east", "land motion east, elastic", "elastic motion of the solid surface to the east"
+    ),
+    "bedrock_horizontal": Variable(
+        "m",
+        "mm Gt-1",
+        "moves towards higher values",
+        "potential of horizontal land motion",
+        "potential whose gradient on the unit sphere is the elastic motion north and east",
+    ),
+    "gravity_fixed": Variable(
+        "m s-2",
+        "nm s-2 Gt-1",
+        "stronger",
+        "gravity at a fixed point",
+        "change in gravity at a fixed point just above the load",
+    ),
+    "gravity_surface": Variable(
+        "m s-2",
+        "nm s-2 Gt-1",
+        "stronger",
+        "gravity at the moving surface",
+        "change in gravity on the moving solid surface, attraction of the load from below",
+    ),
+    "geocentre_x": Variable(
+        "m", "mm Gt-1", "towards 0 N 0 E", "geocentre x", "motion of the centre of mass towards 0 N 0 E"
+    ),
+    "geocentre_y": Variable(
+        "m", "mm Gt-1", "towards 0 N 90 E", "geocentre y", "motion of the centre of mass towards 0 N 90 E"
+    ),
+    "geocentre_z": Variable(
+        "m", "mm Gt-1", "towards north", "geocentre z", "motion of the centre of mass to the north"
+    ),
+    "j2": Variable("1", "Gt-1", "flatter", "J2", "change in the dynamic form factor J2"),
+    "stokes": Variable(
+        "1", "Gt-1", "as printed", "Stokes coefficients", "change in fully normalised gravity coefficients"
+    ),
     "polar_motion_x": Variable(
         "mas", "mas Gt-1", "towards 0 E", "polar motion x", "polar motion x_p caused by the load"
     ),
@@ -101,6 +141,15 @@ def attributes(name: str, *, per_gigatonne: bool = False) -> dict[str, Any]:
     if variable.standard_name and not per_gigatonne:
         out["standard_name"] = variable.standard_name
     return out
+
+
+_TO_RIM = {("m", "mm Gt-1"): 1e3, ("m s-2", "nm s-2 Gt-1"): 1e9, ("kg m-2", "kg m-2 Gt-1"): 1.0}
+
+
+def to_rim(name: str, *, per_gigatonne: bool) -> float:
+    """Factor from SI inside to the unit of a field at the rim: millimetres or nanometres where it is per gigatonne."""
+    variable = VARIABLES[name]
+    return _TO_RIM[variable.unit, variable.per_gigatonne] if per_gigatonne else 1.0
 
 
 @lru_cache(maxsize=1)

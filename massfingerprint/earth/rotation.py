@@ -7,6 +7,8 @@ Lambda = Omega^2 a^2 [-(m1 cos lon + m2 sin lon) sin cos - (2/3) m3 P2].
 Source: linearised Liouville equations below the Chandler frequency, Munk & MacDonald 1960; Mitrovica et al. 2005 (from memory).
 """
 
+from dataclasses import dataclass
+
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
@@ -18,7 +20,32 @@ _TESSERAL = np.sqrt(4.0 * np.pi / 15.0)  # sin cos cos(lon) = _TESSERAL * orthon
 _ZONAL = np.sqrt(4.0 * np.pi / 5.0)  # P2 = _ZONAL * orthonormal function of degree 2, order 0
 
 
-def rotation_vector(load: Array, love: xr.Dataset) -> Array:
+@dataclass(frozen=True)
+class RotationConstants:
+    """What the answer of the rotation depends on, besides the Love numbers.
+
+    Parameters
+    ----------
+    secular_love_number : float
+        k_s: how far the figure follows the axis in the end; from the observed flattening, or from a hydrostatic Earth.
+    polar_moment : float
+        C in kg m2.
+    moment_excess : float
+        C - (A + B)/2 in kg m2.
+    rotation_rate : float
+        Omega in rad s-1.
+    """
+
+    secular_love_number: float = constants.SECULAR_LOVE_NUMBER.value
+    polar_moment: float = constants.POLAR_MOMENT_OF_INERTIA.value
+    moment_excess: float = constants.MOMENT_OF_INERTIA_EXCESS.value
+    rotation_rate: float = constants.ROTATION_RATE.value
+
+
+OBSERVED = RotationConstants()
+
+
+def rotation_vector(load: Array, love: xr.Dataset, rotation: RotationConstants = OBSERVED) -> Array:
     """Change of the rotation vector caused by a load.
 
     Parameters
@@ -27,6 +54,8 @@ def rotation_vector(load: Array, love: xr.Dataset) -> Array:
         Degree-2 real orthonormal coefficients of the whole surface load (ice and ocean), kg m-2: part cos, sin; order 0, 1, 2.
     love : Dataset
         Love numbers.
+    rotation : RotationConstants
+        Moments of inertia and the like.
 
     Returns
     -------
@@ -37,20 +66,18 @@ def rotation_vector(load: Array, love: xr.Dataset) -> Array:
     fourth = float(love.attrs["radius"]) ** 4
     inertia = -fourth * _TESSERAL * load[..., :, 1]
     axial = -2.0 / 3.0 * fourth * _ZONAL * load[..., 0, 0]
-    amplification = (1.0 + k_load) / (
-        constants.MOMENT_OF_INERTIA_EXCESS.value * (1.0 - k_tide / constants.SECULAR_LOVE_NUMBER.value)
-    )
-    rate = -(1.0 + k_load) * axial / constants.POLAR_MOMENT_OF_INERTIA.value
+    amplification = (1.0 + k_load) / (rotation.moment_excess * (1.0 - k_tide / rotation.secular_love_number))
+    rate = -(1.0 + k_load) * axial / rotation.polar_moment
     return np.concatenate([amplification * inertia, rate[..., None]], axis=-1)
 
 
-def centrifugal_factors(love: xr.Dataset) -> tuple[float, float]:
+def centrifugal_factors(love: xr.Dataset, rotation: RotationConstants = OBSERVED) -> tuple[float, float]:
     """Centrifugal potential over gravity, Lambda / g, per load coefficient of degree 2: orders 0 and 1; m per (kg m-2)."""
     zonal, tesseral = np.zeros((2, 3)), np.zeros((2, 3))
     zonal[0, 0] = tesseral[0, 1] = 1.0
-    m3 = rotation_vector(zonal, love)[2]
-    m1 = rotation_vector(tesseral, love)[0]
-    scale = (constants.ROTATION_RATE.value * float(love.attrs["radius"])) ** 2 / float(love.attrs["surface_gravity"])
+    m3 = rotation_vector(zonal, love, rotation)[2]
+    m1 = rotation_vector(tesseral, love, rotation)[0]
+    scale = (rotation.rotation_rate * float(love.attrs["radius"])) ** 2 / float(love.attrs["surface_gravity"])
     return -2.0 / 3.0 * scale * _ZONAL * float(m3), -scale * _TESSERAL * float(m1)
 
 

@@ -1,4 +1,4 @@
-"""Fingerprints: the patterns of relative sea level, sea surface, geoid and bedrock that a load leaves."""
+"""Fingerprints: the patterns of relative sea level, sea surface, geoid, land motion and gravity that a load leaves."""
 
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
@@ -24,7 +24,15 @@ from massfingerprint.sphere.harmonics import check_finite, labelled
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 
-FIELDS = ("relative_sea_level", "sea_surface", "geoid", "bedrock_up")
+LEVELS = ("relative_sea_level", "sea_surface", "geoid", "bedrock_up")
+HORIZONTAL = ("bedrock_north", "bedrock_east")
+FIELDS = (
+    *LEVELS,
+    *HORIZONTAL,
+    "gravity_fixed",
+    "gravity_surface",
+    "surface_load",
+)
 _SCALARS = ("polar_motion_x", "polar_motion_y", "length_of_day_change")
 _ACCOUNT = {
     "rounds": "products with the ocean formed",
@@ -64,13 +72,15 @@ def _check_choices(outputs: tuple[str, ...], frame: str, tolerance: float, on_fa
 
 
 def _field_coefficients(prepared: Prepared, name: str, frame: str, solution: Solution) -> Complex:
-    """Coefficients (n,) in m of one field, each from its own sum."""
+    """Coefficients (n,) in SI units of one field, each from its own sum."""
+    if name == "surface_load":
+        return solution.load
     degree, order = _transform.degrees_and_orders(prepared.max_degree)
     if name == "relative_sea_level":
         factors = prepared.operator.response
     else:
         kind = "geoid" if name == "sea_surface" else name
-        turning = prepared.rotation
+        turning = prepared.turning
         factors = coefficient_factors(prepared.love, kind, degree, order, rotation=turning, reference_frame=frame)
     out = factors * solution.load
     if name in ("relative_sea_level", "sea_surface"):
@@ -83,7 +93,7 @@ def _scalars(prepared: Prepared, solution: Solution) -> tuple[float, float, floa
         return 0.0, 0.0, 0.0
     load = _transform.resized(solution.load, 2)
     pairs = _transform.real_from_complex(load)[:, [2, 4, 5]]
-    vector = rotation_vector(pairs, prepared.love)
+    vector = rotation_vector(pairs, prepared.love, prepared.rotation_constants)
     x, y = polar_motion(vector)
     return float(x), float(y), float(length_of_day_change(vector))
 
@@ -115,7 +125,9 @@ def solve_fingerprints(
         Surface mass, positive = added, units ``kg m-2`` or ``kg m-2 Gt-1`` (or convertible to them), on any regular global
         cell-centred grid. Degrees beyond its band limit are 0.
     outputs : tuple of str
-        Any of ``relative_sea_level``, ``sea_surface``, ``geoid``, ``bedrock_up``.
+        Any of ``relative_sea_level``, ``sea_surface``, ``geoid``, ``bedrock_up``, ``bedrock_north``, ``bedrock_east``,
+        ``gravity_fixed`` (at a fixed point just above the load), ``gravity_surface`` (on the moving surface, the load's
+        attraction from below), ``surface_load`` (ice and water together).
     reference_frame : str
         Frame of degree 1 of all but relative sea level: ``CM``, ``CF``, ``CE``, ``CL`` or ``CH``.
     tolerance : float
@@ -126,10 +138,11 @@ def solve_fingerprints(
     Returns
     -------
     Dataset (..., lat, lon)
-        On the load's grid, fields defined everywhere: m for a load in kg m-2, mm Gt-1 for kg m-2 Gt-1, positive = rise or
-        uplift; ``<name>_coefficients`` (..., part, coefficient); ``polar_motion_x``, ``polar_motion_y`` [mas],
-        ``length_of_day_change`` [ms] (per Gt likewise; 0 without rotation); the account ``rounds``, ``residual``,
-        ``mass_residual``, ``converged``; ``load_extent``, 1 in cells that carry load.
+        On the load's grid, fields defined everywhere: m for a load in kg m-2, mm Gt-1 for kg m-2 Gt-1 (gravity m s-2 and
+        nm s-2 Gt-1), positive = rise, uplift, north, east, stronger; ``<name>_coefficients`` (..., part, coefficient), of the
+        horizontal motion ``bedrock_horizontal_coefficients``, whose gradient on the unit sphere it is; ``polar_motion_x``,
+        ``polar_motion_y`` [mas], ``length_of_day_change`` [ms] (per Gt likewise; 0 without rotation); the account ``rounds``,
+        ``residual``, ``mass_residual``, ``converged``; ``load_extent``, 1 in cells that carry load.
 
     Raises
     ------
@@ -156,7 +169,7 @@ def solve_fingerprints(
         ice = _transform.analyse(grid.to_rings(flat[position]) * scale, band, grid.first_azimuth)
         solution = solve(
             prepared.operator,
-            _transform.resized(ice, prepared.max_degree),
+            prepared.with_melt(_transform.resized(ice, prepared.max_degree)),
             tolerance=tolerance,
             correction=prepared.correction,
         )
@@ -205,6 +218,7 @@ def _attributes(prepared: Prepared, frame: str, load_degree: int) -> dict[str, A
         "load_max_degree": load_degree,
         "rotation": "on" if prepared.rotation else "off",
         "water_density": prepared.water_density,
+        "redistributed_density": prepared.redistributed_density,
         "ocean_area": prepared.ocean_area,
         "gigatonnes_per_millimetre": prepared.gigatonnes_per_millimetre,
         "love_numbers": str(prepared.love.attrs.get("source", "given by the user")),
@@ -212,17 +226,23 @@ def _attributes(prepared: Prepared, frame: str, load_degree: int) -> dict[str, A
     }
 
 
+def _held(name: str) -> str:
+    """Name of the coefficients that a field is made from."""
+    return "bedrock_horizontal" if name in HORIZONTAL else name
+
+
 class _Store:
     """Arrays of the results, filled load by load."""
 
     def __init__(self, names: tuple[str, ...], count: int, max_degree: int, grid: Grid) -> None:
         self._names, self._grid = names, grid
+        held = list(dict.fromkeys(_held(name) for name in names))
         shapes = (count, grid.nlat, grid.nlon), (count, 2, _transform.coefficient_count(max_degree))
-        size = 8 * len(names) * sum(int(np.prod(shape)) for shape in shapes)
+        size = 8 * (len(names) * int(np.prod(shapes[0])) + len(held) * int(np.prod(shapes[1])))
         limit = options.memory_limit()
         new = np.empty if limit is None or size <= limit else scratch_array
         self._fields = {name: new(shapes[0]) for name in names}
-        self._pairs = {name: new(shapes[1]) for name in names}
+        self._pairs = {name: new(shapes[1]) for name in held}
         self._scalars = np.empty((count, len(_SCALARS)))
         self._account: dict[str, NDArray] = {
             "rounds": np.empty(count, dtype=np.int32),
@@ -232,29 +252,39 @@ class _Store:
         }
 
     def put(self, position: int, prepared: Prepared, solution: Solution, frame: str) -> None:
-        grid = self._grid
-        for name in self._names:
+        for name in self._pairs:
             coefficients = _field_coefficients(prepared, name, frame, solution)
-            rings = _transform.synthesise(coefficients, (grid.nlat, grid.nlon), grid.first_azimuth)
-            self._fields[name][position] = grid.from_rings(rings)
+            for label, rings in self._rings(name, coefficients).items():
+                self._fields[label][position] = self._grid.from_rings(rings)
             self._pairs[name][position] = _transform.real_from_complex(coefficients)
         self._scalars[position] = _scalars(prepared, solution)
         for name, values in self._account.items():
             values[position] = getattr(solution, name)
 
+    def _rings(self, name: str, coefficients: Complex) -> dict[str, Array]:
+        grid = self._grid
+        shape = (grid.nlat, grid.nlon)
+        if name != "bedrock_horizontal":
+            return {name: _transform.synthesise(coefficients, shape, grid.first_azimuth)}
+        both = _transform.gradient(coefficients, shape, grid.first_azimuth)
+        return {label: part for label, part in zip(HORIZONTAL, both, strict=True) if label in self._names}
+
     def dataset(self, load: xr.DataArray, per_gigatonne: bool) -> xr.Dataset:
         lead, shape = load.dims[:-2], load.shape[:-2]
-        unit = 1e3 if per_gigatonne else 1.0  # m per (kg m-2) to mm per Gt
         coords = {k: v for k, v in load.coords.items() if set(v.dims) <= set(lead)}
         out = xr.Dataset(coords={**coords, "lat": load["lat"], "lon": load["lon"]})
         for name in self._names:
+            unit = vocabulary.to_rim(name, per_gigatonne=per_gigatonne)
             attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
             field = self._fields[name] if unit == 1.0 else self._fields[name].__imul__(unit)
             out[name] = ((*lead, "lat", "lon"), field.reshape((*shape, *field.shape[-2:])), attrs)
-            self._pairs[name] *= unit
-            pairs = labelled(self._pairs[name].reshape((*shape, *self._pairs[name].shape[1:])), lead, coords)
+        for name, pairs in self._pairs.items():
+            np.multiply(pairs, vocabulary.to_rim(name, per_gigatonne=per_gigatonne), out=pairs)
+            attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
             own = {"units": attrs["units"], "long_name": f"orthonormal coefficients of {attrs['long_name']}"}
-            out[f"{name}_coefficients"] = pairs.assign_attrs(own)
+            out[f"{name}_coefficients"] = labelled(
+                pairs.reshape((*shape, *pairs.shape[1:])), lead, coords
+            ).assign_attrs(own)
         for column, name in enumerate(_SCALARS):
             attrs = vocabulary.attributes(name, per_gigatonne=per_gigatonne)
             out[name] = (lead, self._scalars[:, column].reshape(shape), attrs)

@@ -63,11 +63,12 @@ def _kernels_of_site(
     if "bedrock_up" in names or "sea_surface" in names:
         degree, order = _transform.degrees_and_orders(prepared.max_degree)
         factors = coefficient_factors(
-            prepared.love, "bedrock_up", degree, order, rotation=prepared.rotation, reference_frame=frame
+            prepared.love, "bedrock_up", degree, order, rotation=prepared.turning, reference_frame=frame
         )
         bedrock = factors * point
         follows = sea_level_of(prepared, prepared.operator.ocean_load(bedrock), tolerance=tolerance, label=label)
         out["bedrock_up"] = bedrock + follows
+    out = {name: prepared.with_melt_adjoint(kernel) for name, kernel in out.items()}
     if "sea_surface" in names:
         out["sea_surface"] = out["relative_sea_level"] + out["bedrock_up"]
     return {name: out[name] for name in names}

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from massfingerprint.errors import InputError
 from massfingerprint.sphere.grids import Grid, grid_of
 from massfingerprint.sphere.harmonics import max_degree_of
-from massfingerprint.sphere.points import check_sites, distance_to_cells, values_at
+from massfingerprint.sphere.points import check_sites, distance_to_cells, gradients_at, values_at
 
 Array = NDArray[np.float64]
 RESOLVED_BEYOND = 100.0  # km from the load; nearer, the missing degrees carry too much of the value
@@ -37,7 +37,8 @@ def at_sites(patterns: xr.Dataset, sites: pd.DataFrame) -> xr.Dataset:
     Returns
     -------
     Dataset (..., site)
-        ``<name>`` in the unit of the pattern; ``<name>_truncation``: the value minus the value from degrees up to half the
+        ``<name>`` in the unit of the pattern (``bedrock_north`` and ``bedrock_east`` of ``bedrock_horizontal_coefficients``);
+        ``<name>_truncation``: the value minus the value from degrees up to half the
         highest one, signed; ``<name>_tapered``: the value with a smooth taper on the upper half of the degrees. Where the
         patterns know their load, ``distance_to_load`` in km and ``resolved``: 1 beyond 100 km from it, else 0.
 
@@ -72,12 +73,20 @@ def at_sites(patterns: xr.Dataset, sites: pd.DataFrame) -> xr.Dataset:
     return out
 
 
+_PARTS = {"bedrock_horizontal": ("bedrock_north", "bedrock_east")}
+
+
 def _evaluated(name: str, coefficients: xr.DataArray, sites: pd.DataFrame) -> Iterator[tuple[str, xr.DataArray]]:
+    """Fields at sites of one set of coefficients: the field itself, or the parts of its gradient."""
     max_degree = max_degree_of(coefficients)
-    degree = coefficients["degree"]
-    whole = values_at(coefficients, sites)
-    lower = values_at(coefficients * (degree <= max_degree // 2), sites)
-    tapered = values_at(coefficients * xr.DataArray(taper(degree.values, max_degree), dims="coefficient"), sites)
+    degree, parts = coefficients["degree"], _PARTS.get(name, (name,))
+    ends = xr.DataArray(taper(degree.values, max_degree), dims="coefficient")
+
+    def here(rows: xr.DataArray) -> Array:
+        return np.moveaxis(gradients_at(rows, sites), -2, 0) if name in _PARTS else values_at(rows, sites)[None]
+
+    whole, tapered = here(coefficients), here(coefficients * ends)
+    lower = here(coefficients * (degree <= max_degree // 2))
     words = {
         "": (whole, "at the site"),
         "_truncation": (whole - lower, f"value minus the value from degrees up to {max_degree // 2}"),
@@ -86,8 +95,9 @@ def _evaluated(name: str, coefficients: xr.DataArray, sites: pd.DataFrame) -> It
     lead: tuple[Any, ...] = coefficients.dims[:-2]
     coords = {key: value for key, value in coefficients.coords.items() if set(value.dims) <= set(lead)}
     for suffix, (values, meaning) in words.items():
-        attrs = {"units": coefficients.attrs.get("units", "1"), "long_name": f"{name.replace('_', ' ')}, {meaning}"}
-        yield f"{name}{suffix}", xr.DataArray(values, dims=(*lead, "site"), coords=coords, attrs=attrs)
+        for part, row in zip(parts, values, strict=True):
+            attrs = {"units": coefficients.attrs.get("units", "1"), "long_name": f"{part.replace('_', ' ')}, {meaning}"}
+            yield f"{part}{suffix}", xr.DataArray(row, dims=(*lead, "site"), coords=coords, attrs=attrs)
 
 
 def _distance(extent: xr.DataArray, sites: pd.DataFrame) -> xr.DataArray:

@@ -148,6 +148,44 @@ def synthesise(coefficients: Complex, shape: tuple[int, int], first_azimuth: flo
     return out.reshape((*lead, *shape))
 
 
+def gradient(coefficients: Complex, shape: tuple[int, int], first_azimuth: float) -> Array:
+    """Surface gradient on the unit sphere (2, nlat, nlon), north and east, of a field (n,); rings as in :func:`synthesise`."""
+    out = np.empty((2, *shape))
+    ducc0.sht.synthesis_2d(
+        alm=np.ascontiguousarray(coefficients, dtype=np.complex128)[None],
+        map=out,
+        spin=1,
+        lmax=degree_of_count(coefficients.size),
+        geometry="F1",
+        phi0=first_azimuth,
+        mode="DERIV1",
+        nthreads=options.threads(),
+    )
+    out[0] *= -1.0  # the library's first component is along the co-latitude
+    return out
+
+
+def gradient_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Array:
+    """Surface gradient (..., 2, npoint), north and east, of fields (..., n) at points (radians)."""
+    lead, count = coefficients.shape[:-1], colatitude.size
+    rows = np.ascontiguousarray(coefficients.reshape((-1, 1, coefficients.shape[-1])), dtype=np.complex128)
+    if count == 0 or rows.shape[0] == 0:
+        return np.zeros((*lead, 2, count))
+    values = ducc0.sht.synthesis(
+        alm=rows,
+        theta=np.ascontiguousarray(colatitude, dtype=np.float64),
+        phi0=np.ascontiguousarray(azimuth, dtype=np.float64),
+        nphi=np.ones(count, dtype=np.uint64),
+        ringstart=np.arange(count, dtype=np.uint64),
+        spin=1,
+        lmax=degree_of_count(coefficients.shape[-1]),
+        mode="DERIV1",
+        nthreads=options.threads(),
+    )
+    values[:, 0] *= -1.0
+    return values.reshape((*lead, 2, count))
+
+
 def synthesise_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Array:
     """Values (..., npoint) at points (radians): each point is a ring of one cell, so Legendre functions are exact."""
     lead = coefficients.shape[:-1]

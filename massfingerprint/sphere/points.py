@@ -102,6 +102,14 @@ def values_at(coefficients: xr.DataArray, sites: pd.DataFrame) -> Array:
     return _transform.synthesise_at(alm, colatitude, azimuth)
 
 
+def gradients_at(coefficients: xr.DataArray, sites: pd.DataFrame) -> Array:
+    """Surface gradient on the unit sphere (..., 2, nsite), north and east, of real coefficients (..., part, coefficient)."""
+    alm = _transform.complex_from_real(np.asarray(coefficients.values, dtype=np.float64))
+    colatitude = np.deg2rad(90.0 - sites["lat"].to_numpy(dtype=np.float64))
+    azimuth = np.deg2rad(sites["lon"].to_numpy(dtype=np.float64) % 360.0)
+    return _transform.gradient_at(alm, colatitude, azimuth)
+
+
 def _unit_vectors(lat: Array, lon: Array) -> Array:
     phi, lam = np.deg2rad(lat), np.deg2rad(lon)
     return np.stack([np.cos(phi) * np.cos(lam), np.cos(phi) * np.sin(lam), np.sin(phi)], axis=-1)

@@ -16,7 +16,7 @@ from massfingerprint.errors import DamagedFileError
 from massfingerprint.files.arrays import fetch, fingerprint_of, store
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.spread import spread_mass
-from massfingerprint.sealevel.fingerprints import FIELDS, solve_fingerprints
+from massfingerprint.sealevel.fingerprints import LEVELS, solve_fingerprints
 from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
 from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
@@ -118,7 +118,7 @@ def solve_patterns(
     RegionError, NotConvergedError
         If a source's outline cannot carry mass or a solve fails.
     """
-    fields = tuple(name for name in FIELDS if name in {*recipe.output.fields, *SITE_FIELDS})
+    fields = tuple(name for name in LEVELS if name in {*recipe.output.fields, *SITE_FIELDS})
     base = problem.fingerprint(recipe)
     pieces, loads, damaged, reused = [], [], [], 0
     for number in range(len(outlines)):

@@ -16,7 +16,7 @@ from massfingerprint.mass.covariance import COMPONENTS
 from massfingerprint.mass.intervals import INTERVALS
 from massfingerprint.mass.ledger import QUANTITIES
 from massfingerprint.mass.rates import check_windows
-from massfingerprint.sealevel.fingerprints import FIELDS
+from massfingerprint.sealevel.fingerprints import LEVELS
 from massfingerprint.sphere.grids import regular_grid
 
 FIGURE_FORMATS = ("png", "pdf", "svg")
@@ -230,7 +230,7 @@ _TABLES: dict[str, tuple[type, dict[str, Check]]] = {
         {
             "folder": _path,
             "maps": _switch,
-            "fields": _list_of(_word(FIELDS, "field"), least=1),
+            "fields": _list_of(_word(LEVELS, "field"), least=1),
             "interval": _word(INTERVALS, "interval"),
             "figure_formats": _list_of(_word(FIGURE_FORMATS, "format of figures"), least=1),
             "reference_frame": _word(FRAMES, "reference frame"),

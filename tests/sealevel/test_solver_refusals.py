@@ -156,7 +156,7 @@ def test_odd_input_meets_a_message_of_ours(case, love):
 
 @pytest.mark.parametrize("rotation", ["off", None, 1])
 def test_rotation_is_true_or_false(rotation, love):
-    with pytest.raises(InputError, match="rotation: must be True or False, got"):
+    with pytest.raises(InputError, match="rotation: must be True, False or RotationConstants, got"):
         prepare_solver(WATER, love, max_degree=4, rotation=rotation)
 
 
