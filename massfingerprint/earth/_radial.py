@@ -286,15 +286,24 @@ def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1
     """
     degrees = np.arange(1.0, max_degree + 1.0)
     table = np.zeros((6, max_degree + 1))
-    defect = 0.0
+    table[:, 1:], defect = _table(model, degrees, refinement)
+    table[3:, 1] = 0.0
+    table[2, 1] = 0.0
+    table[0, 0] = _degree_zero(model, refinement)
+    return SurfaceNumbers(*table, degree_one_defect=defect)
+
+
+def numbers_at(model: EarthModel, degrees: Array, *, refinement: float = 1.0) -> Array:
+    """The six numbers (6, n), rows h' l' k' h l k, at ascending degrees (n,) above 1, whole or not."""
+    return _table(model, degrees, refinement)[0]
+
+
+def _table(model: EarthModel, degrees: Array, refinement: float) -> tuple[Array, float]:
+    out, defect = np.empty((6, degrees.size)), 0.0
     for batch in _batches(degrees):
         n = degrees[batch]
         load, tide, wrong = _surface(n, _integrate(model, n, refinement))
         defect = max(defect, wrong)
-        table[:3, batch + 1] = load[:, 0], load[:, 2] / n, load[:, 4] - 1.0
-        table[3:, batch + 1] = tide[:, 0], tide[:, 2] / n, tide[:, 4] - 1.0
-    table[3:, 1] = 0.0
-    table[2, 1] = 0.0
-    table[0, 0] = _degree_zero(model, refinement)
-    h_load, l_load, k_load, h_tide, l_tide, k_tide = table
-    return SurfaceNumbers(h_load, l_load, k_load, h_tide, l_tide, k_tide, defect)
+        out[:3, batch] = load[:, 0], load[:, 2] / n, load[:, 4] - 1.0
+        out[3:, batch] = tide[:, 0], tide[:, 2] / n, tide[:, 4] - 1.0
+    return out, defect

@@ -32,7 +32,9 @@ from massfingerprint.sphere.grids import grid_of
 from massfingerprint.sphere.points import check_sites
 
 Array = NDArray[np.float64]
-NEAR_FIELDS = ("relative_sea_level", "sea_surface", "bedrock_up")
+NEAR_FIELDS = ("relative_sea_level", "sea_surface", "bedrock_up", "bedrock_north", "bedrock_east")
+_DIRECT = ("relative_sea_level", "bedrock_up")
+_SIDEWAYS = "bedrock_horizontal"
 WITHIN = 300.0  # km
 _RINGS, _TURNS = 400, 360
 _EARTH_KM = SPHERE_RADIUS.value / 1e3
@@ -80,8 +82,9 @@ def near_field(
     Returns
     -------
     Dataset (source, site)
-        ``relative_sea_level``, ``sea_surface``, ``bedrock_up``: mm Gt-1 to add, 0 beyond ``within``; ``<name>_step``: how far the
-        integral moves with half the rings; ``distance_to_outline`` in km, 0 inside; ``near_field`` 1 where something is added;
+        ``relative_sea_level``, ``sea_surface``, ``bedrock_up``, ``bedrock_north``, ``bedrock_east``: mm Gt-1 to add, 0 beyond
+        ``within``; ``<name>_step``: how far the integral moves with half the rings; ``distance_to_outline`` in km, 0 inside;
+        ``near_field`` 1 where something is added;
         ``resolved`` 0 where the outline itself is too coarse: its edge is nearer to the site than the edge's own corners are apart.
 
     Raises
@@ -96,12 +99,12 @@ def near_field(
         raise InputError(
             "load: must have the sources of the outlines, in the same order. Spread it over these outlines."
         )
-    values = np.zeros((2, 2, len(shapes), len(table)))  # with all rings and with half of them; two fields
+    values = np.zeros((2, 4, len(shapes), len(table)))  # with all rings and with half of them; four fields
     about = np.zeros((3, len(shapes), len(table)))
     about[2] = 1.0
     tables = {
         name: point_response_table(prepared.long_love, name, reference_frame=reference_frame)
-        for name in NEAR_FIELDS[::2]
+        for name in (*_DIRECT, _SIDEWAYS)
     }
     for row, (name, shape) in enumerate(shapes.items()):
         held = _gridded(prepared, load.sel(source=name), table, reference_frame) if len(table) else None
@@ -112,7 +115,7 @@ def near_field(
             if view.nearest * _EARTH_KM > within or held is None:
                 continue
             for half in (0, 1):
-                whole = _integrals(shape, view, float(lat), float(lon), list(tables.values()), _RINGS // (half + 1))
+                whole = _integrals(shape, view, (float(lat), float(lon)), tables, _RINGS // (half + 1))
                 values[half, :, row, column] = 1e3 * (whole - held[:, column])
             about[1:, row, column] = 1.0, float(view.edge > view.coarseness)
     return _dataset(values, about, load, table).assign_attrs(reference_frame=reference_frame, within=within)
@@ -125,9 +128,12 @@ def _gridded(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, frame:
     band = min(grid.band_limit, prepared.max_degree)
     ice = _transform.analyse(grid.to_rings(load.transpose("lat", "lon").values), band, grid.first_azimuth)
     degree, _ = _transform.degrees_and_orders(band)
-    rows = [ice * degree_factors(prepared.love, name, reference_frame=frame)[degree] for name in NEAR_FIELDS[::2]]
+    *rows, sideways = (
+        ice * degree_factors(prepared.love, name, reference_frame=frame)[degree] for name in (*_DIRECT, _SIDEWAYS)
+    )
     colatitude, azimuth = np.deg2rad(90.0 - sites["lat"].to_numpy()), np.deg2rad(sites["lon"].to_numpy() % 360.0)
-    return _transform.synthesise_at(np.stack(rows), colatitude, azimuth)
+    along = _transform.gradient_at(sideways, colatitude, azimuth)
+    return np.concatenate([_transform.synthesise_at(np.stack(rows), colatitude, azimuth), along])
 
 
 def _polar(lat: float, lon: float, latitudes: Array, longitudes: Array) -> tuple[Array, Array]:
@@ -169,22 +175,29 @@ def _seen(shape: BaseGeometry, lat: float, lon: float) -> _View:
     return _View(nearest, float(distance.max()), first, span, edge, min(apart), inside)
 
 
-def _integrals(shape: BaseGeometry, view: _View, lat: float, lon: float, tables: list[Any], rings: int) -> Array:
-    """Integral (field,) in m of sin(psi) G(psi) over one gigatonne spread evenly within an outline."""
+def _integrals(
+    shape: BaseGeometry, view: _View, place: tuple[float, float], tables: dict[str, Any], rings: int
+) -> Array:
+    """Integral (field,) in m of sin(psi) G(psi) over one gigatonne spread evenly within an outline; sideways north and east."""
     # midpoints, denser towards the site: psi grows as the square of the ring's number
     edges = view.nearest + (view.farthest - view.nearest) * np.linspace(0.0, 1.0, rings + 1) ** 2
     middle, width = 0.5 * (edges[1:] + edges[:-1]), np.diff(edges)
     turn = view.first_azimuth + view.span * (np.arange(_TURNS) + 0.5) / _TURNS
-    latitude, longitude = _around(lat, lon, middle[:, None], turn[None, :])
-    share = shapely.contains_xy(shape, longitude.ravel(), latitude.ravel()).reshape(latitude.shape).mean(axis=1)
-    angle = share * view.span * width
+    latitude, longitude = _around(*place, middle[:, None], turn[None, :])
+    inside = shapely.contains_xy(shape, longitude.ravel(), latitude.ravel()).reshape(latitude.shape)
+    angle = inside.mean(axis=1) * view.span * width
     area = float(np.sum(angle * np.sin(middle)))
-    return np.array([float(np.sum(angle * spline(np.log(middle)))) for spline in tables]) / area
+    at = np.log(middle)
+    out = [float(np.sum(angle * tables[name](at))) for name in _DIRECT]
+    # a site moves away from the load: against the azimuth at which it lies
+    away = tables[_SIDEWAYS](at) * view.span * width
+    out += [-float(np.sum((inside * part(turn)).mean(axis=1) * away)) for part in (np.cos, np.sin)]
+    return np.array(out) / area
 
 
 def _dataset(values: Array, about: Array, load: xr.DataArray, sites: pd.DataFrame) -> xr.Dataset:
-    level, up = values[:, 0], values[:, 1]
-    parts = dict(zip(NEAR_FIELDS, (level, level + up, up), strict=True))
+    level, up, *sideways = values.swapaxes(0, 1)
+    parts = dict(zip(NEAR_FIELDS, (level, level + up, up, *sideways), strict=True))
     coords = {"source": load["source"].values, "site": sites["site"].to_numpy(dtype=object)}
     out = xr.Dataset(coords=coords)
     for name, (whole, half) in parts.items():
@@ -230,7 +243,7 @@ def add_near_field(values: xr.Dataset, near: xr.Dataset) -> xr.Dataset:
             "near: must be of the same sources, sites and frame as the values. Make both from the same lists."
         )
     out, added = values.copy(), near["near_field"] == 1
-    for name in (name for name in NEAR_FIELDS if name in values):
+    for name in (name for name in NEAR_FIELDS if name in values and name in near):
         part = near[name].transpose(*values[name].dims)
         whole = (values[name] + part).assign_attrs(values[name].attrs)
         out[name] = whole

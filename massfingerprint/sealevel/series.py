@@ -71,8 +71,8 @@ def sea_level_series(
     Returns
     -------
     Dataset
-        ``<name>_total``, ``<name>_total_sigma`` (time, site) or (time, lat, lon) in mm (gravity nm s-2) since the
-        ledger's reference epoch, positive = rise or uplift, NaN at times at which a source has no value; with sources kept ``<name>``,
+        ``<name>_total``, ``<name>_total_sigma`` (time, site) or (time, lat, lon) in mm (gravity nm s-2) since the ledger's
+        reference epoch, positive = rise or uplift, NaN at times at which a source has no value; with sources kept ``<name>``,
         ``<name>_sigma`` (time, source, ...). Sigmas are 1 sigma of the mass record.
 
     Raises

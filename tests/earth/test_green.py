@@ -39,6 +39,19 @@ def test_against_a_plain_sum_of_sixty_thousand_degrees(love, field):
     assert got[0] == pytest.approx(expected[0], rel=2e-3)
 
 
+def test_horizontally_against_a_plain_sum(love):
+    """40 000 degrees of Love numbers, cut smoothly: 1e-3 of the value from 0.3 degree on, 1e-2 at 0.05 degree."""
+    long = in_frame(love_numbers(max_degree=40_000), "CM")["l_load"].values
+    degree = np.arange(40_001.0)
+    weights = long * 0.5 * (1.0 + np.cos(np.pi * np.clip(2.0 * degree / 40_000 - 1.0, 0.0, 1.0)))
+    scale = 3.0 / love.attrs["mean_density"] * MASS / (4.0 * np.pi * A**2)
+    expected = -scale * np.sin(ANGLE) * legendre.legval(np.cos(ANGLE), legendre.legder(weights))
+    got = point_response(love, "bedrock_horizontal", ANGLE)
+    np.testing.assert_allclose(got[1:], expected[1:], rtol=1e-3, atol=1e-10)
+    assert got[0] == pytest.approx(expected[0], rel=1e-2)
+    assert got[0] < 0.0  # towards the load beside it, as Farrell 1972 has it
+
+
 def test_a_rigid_earth_moves_nothing_and_pulls_by_newton(love):
     """No Love numbers: the geoid of a point mass without its degree 0 is m a / M (1/(2 s) - 1), exactly."""
     rigid = love.copy(deep=True)

@@ -179,7 +179,7 @@ def test_degrees_beyond_the_shipped_table_are_computed():
     table = love_numbers(max_degree=2050)
     assert table.sizes["degree"] == 2051
     shipped = love_numbers(max_degree=2048)
-    np.testing.assert_allclose(table["h_load"][:2049], shipped["h_load"], rtol=0, atol=1e-11)
+    np.testing.assert_allclose(table["h_load"][:2049], shipped["h_load"], rtol=1e-10)  # of the integration: 2e-11
 
 
 def test_layout(love):

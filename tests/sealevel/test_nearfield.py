@@ -25,8 +25,8 @@ def problem(love):
     return prepared, outline, mf.spread_mass(outline, ocean)
 
 
-def direct_sum(weights, radius_km, *, degrees=20_000):
-    """Field (site,) in mm per Gt on a disc, degree by degree: w continued as w_last + (tail of 1/l) beyond the given ones."""
+def disc_shape(radius_km, degrees):
+    """Degree weights (degrees + 1,) of one gigatonne on a disc, by the exact integral of P_l over it, kg m-2 times 2."""
     degree, edge = np.arange(degrees + 1.0), np.cos(radius_km / 6371.0)
     legendre_at = np.empty(degrees + 2)
     legendre_at[:2] = 1.0, edge
@@ -34,10 +34,45 @@ def direct_sum(weights, radius_km, *, degrees=20_000):
         legendre_at[n + 1] = ((2 * n + 1) * edge * legendre_at[n] - n * legendre_at[n - 1]) / (n + 1)
     shape = np.zeros(degrees + 1)
     shape[1:] = 0.5 * (legendre_at[:degrees] - legendre_at[2 : degrees + 2])
-    density = 1e12 / (2.0 * np.pi * A**2 * (1.0 - edge))
-    response = 3.0 * weights / (2.0 * degree + 1.0)
-    response[0] = 0.0
-    return 1e3 * density * legendre.legval(np.cos(KM / 6371.0), response * shape)
+    return 1e12 / (2.0 * np.pi * A**2 * (1.0 - edge)) * shape / (2.0 * degree + 1.0)
+
+
+def direct_sum(weights, radius_km, *, degrees=20_000):
+    """Field (site,) in mm per Gt on a disc, degree by degree: w continued as w_last + (tail of 1/l) beyond the given ones."""
+    return 1e3 * legendre.legval(np.cos(KM / 6371.0), 3.0 * weights * disc_shape(radius_km, degrees))
+
+
+def test_horizontal_motion_beside_a_disc_is_that_of_twenty_thousand_degrees(problem, love):
+    """South and east of a disc of 10 km, at 12 to 250 km: within 1 % of a sum with Love numbers of all degrees."""
+    prepared, outline, load = problem
+    long = in_frame(mf.love_numbers(max_degree=20_000), "CM")
+    weights = 3.0 * long["l_load"].values / love.attrs["mean_density"] * disc_shape(10.0, 20_000)
+    angle = KM / 6371.0
+    away = -1e3 * np.sin(angle) * legendre.legval(np.cos(angle), legendre.legder(weights))
+    turn = np.deg2rad(np.array([180.0, 90.0]))  # sites south of the disc, sites east of it
+    for azimuth in turn:
+        phi = np.deg2rad(LAT)
+        sine = np.sin(phi) * np.cos(angle) + np.cos(phi) * np.sin(angle) * np.cos(azimuth)
+        lon = LON + np.rad2deg(
+            np.arctan2(np.sin(azimuth) * np.sin(angle) * np.cos(phi), np.cos(angle) - np.sin(phi) * sine)
+        )
+        sites = pd.DataFrame({"site": SITES["site"], "lat": np.rad2deg(np.arcsin(sine)), "lon": lon})
+        near = near_field(prepared, outline, load, sites)
+        held = _gridded(prepared, load.isel(source=0), sites, "CM") * 1e3
+        north, east = (near[f"bedrock_{n}"].values[0] + held[row] for n, row in (("north", 2), ("east", 3)))
+        # direction from the disc on to the site, seen at the site
+        back = np.arctan2(
+            np.cos(phi) * np.sin(np.deg2rad(LON - sites["lon"])),
+            np.cos(np.arcsin(sine)) * np.sin(phi) - sine * np.cos(phi) * np.cos(np.deg2rad(LON - sites["lon"])),
+        )
+        here = slice(1, None)
+        np.testing.assert_allclose(
+            north[here], (-np.cos(back) * away)[here], rtol=0.01, atol=0.01 * abs(away[here]).min()
+        )
+        np.testing.assert_allclose(
+            east[here], (-np.sin(back) * away)[here], rtol=0.01, atol=0.01 * abs(away[here]).min()
+        )
+        assert np.hypot(north[0], east[0]) < 0.01 * np.abs(away).max()  # nothing in the middle, by symmetry
 
 
 def continued(love, degrees=20_000):
