@@ -40,4 +40,5 @@ KILOGRAMS_PER_GIGATONNE = Constant(1.0e12, "kg Gt-1", 0.0, "definition")
 GIGATONNES_PER_MILLIMETRE = Constant(
     361.8, "Gt mm-1", 0.0, "ocean area 3.618e14 m2, rounded from Charette & Smith 2010; IPCC AR6 uses 362.5"
 )
+ELLIPSOID_FLATTENING = Constant(1.0 / 298.257223563, "1", 0.0, "WGS84")
 MILLIARCSECONDS_PER_RADIAN = Constant(206264806.24709636, "mas rad-1", 0.0, "180*3600*1000/pi")

@@ -10,21 +10,20 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 
+from massfingerprint.cli._problem import Problem, problem_options
 from massfingerprint.cli._progress import progress
 from massfingerprint.cli._tables import as_json, rendered
 from massfingerprint.constants import FRESH_WATER_DENSITY
 from massfingerprint.earth.green import LEAST_DEGREE
-from massfingerprint.earth.love import love_numbers
 from massfingerprint.errors import FolderError
 from massfingerprint.files.atomic import write_binary, write_text
 from massfingerprint.files.netcdf import write_cf_netcdf
 from massfingerprint.files.tables import csv_text
-from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.regions import region_names, regions
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
 from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
-from massfingerprint.sealevel.solver import Prepared, prepare_solver
+from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sealevel.within import range_of
 from massfingerprint.sphere.points import read_sites
 from massfingerprint.study.metadata import CAUTION, LEFT_OUT, now
@@ -166,12 +165,7 @@ def _strip(folder: Path, tables: dict[str, pd.DataFrame], load: xr.DataArray, sm
     multiple=True,
     help="A built-in region; may be repeated. Default: all that are no part of another.",
 )
-@click.option(
-    "--max-degree", default=512, show_default=True, type=click.IntRange(2, 4096), help="Degree of the solution."
-)
-@click.option(
-    "--spacing", default=0.25, show_default=True, type=float, help="Grid spacing in degrees; must divide 180."
-)
+@problem_options
 @click.option("--csv", "csv_file", type=click.Path(path_type=Path), help="Also write the table here, full numbers.")
 @click.option(
     "--netcdf",
@@ -187,7 +181,7 @@ def _strip(folder: Path, tables: dict[str, pd.DataFrame], load: xr.DataArray, sm
 )
 @click.option("--json", "as_data", is_flag=True, help="Print the table as JSON with full numbers.")
 @click.option("--quiet", is_flag=True, help="No talk on stderr.")
-def command(sites_file: Path, named: tuple[str, ...], **options: Any) -> None:
+def command(sites_file: Path, named: tuple[str, ...], problem: Problem, **options: Any) -> None:
     """Rank what 1000 gigatonnes lost from each region do at a coast, in mm, with the range within each region.
 
     One solve a site and field, by reciprocity; the kernel is good for any mass anywhere (--netcdf).
@@ -195,16 +189,15 @@ def command(sites_file: Path, named: tuple[str, ...], **options: Any) -> None:
     Example: massfingerprint kernel --sites data_small/coasts.csv --region greenland_southeast --region west_antarctica_amundsen
     """
     sites, sources = read_sites(sites_file), _sources(named)
-    outlines, ocean = regions(*sources), ocean_fraction(options["spacing"])
-    degree = options["max_degree"]
-    prepared = prepare_solver(ocean, love_numbers(max_degree=max(degree, LEAST_DEGREE)), max_degree=degree)
-    kernels, load = _kernels(prepared, sites, quiet=options["quiet"]), spread_mass(outlines, ocean)
+    outlines, prepared = regions(*sources), problem.prepared(least_degree=LEAST_DEGREE)
+    kernels, load = _kernels(prepared, sites, quiet=options["quiet"]), spread_mass(outlines, problem.ocean)
     values = _values(kernels, prepared, outlines, load, sites)
     tables = {
         str(site): _table(values, str(site), 1.0 / prepared.gigatonnes_per_millimetre) for site in values["site"].values
     }
     _print(tables, prepared, as_data=options["as_data"])
-    small = f"Spread evenly over each outline. PREM, degree {degree}, rotation on. {LEFT_OUT} {CAUTION}"
+    solved = f"Earth {problem.earth}, degree {problem.max_degree}, rotation on."
+    small = f"Spread evenly over each outline. {solved} {LEFT_OUT} {CAUTION}"
     if options["csv_file"] is not None:
         write_text(csv_text(pd.concat(tables.values(), ignore_index=True)), options["csv_file"])
     if options["netcdf_file"] is not None:

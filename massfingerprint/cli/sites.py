@@ -9,22 +9,17 @@ import numpy as np
 import pandas as pd
 import xarray as xr
 
+from massfingerprint.cli._mass_rates import mass_rates_options, spread
+from massfingerprint.cli._problem import Problem, problem_options
 from massfingerprint.constants import GIGATONNES_PER_MILLIMETRE
 from massfingerprint.earth.green import LEAST_DEGREE
-from massfingerprint.earth.love import love_numbers
-from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
-from massfingerprint.files.tables import read_rates
-from massfingerprint.load.ocean import ocean_fraction
-from massfingerprint.load.regions import region_names, regions
+from massfingerprint.load.regions import regions
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.mass.intervals import shown
-from massfingerprint.mass.published import published_rates
-from massfingerprint.mass.scope import check_scope
-from massfingerprint.sealevel.fingerprints import solve_fingerprints
-from massfingerprint.sealevel.nearfield import WITHIN, add_near_field, near_field, smoothed
-from massfingerprint.sealevel.sites import at_sites
-from massfingerprint.sealevel.solver import Prepared, prepare_solver
+from massfingerprint.sealevel.coasts import coast_values
+from massfingerprint.sealevel.nearfield import WITHIN
+from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.points import read_sites
 
@@ -52,14 +47,7 @@ class Answer:
 
     def sigma(self, name: str) -> np.ndarray:
         """Standard uncertainty (site,) in mm yr-1 of the total, from the mass rates alone."""
-        return self._spread(self.patterns[name].values)
-
-    def _spread(self, per_gt: np.ndarray) -> np.ndarray:
-        """Sigma (site,) of the sum over sources of rate times ``per_gt`` (source, site): shared within an error group."""
-        parts = per_gt * self.rates["mass_rate_sigma"].to_numpy()[:, None]
-        groups = self.rates["error_group"].to_numpy()
-        together = [parts[groups == group].sum(axis=0) for group in dict.fromkeys(groups)]
-        return np.sqrt((np.stack(together) ** 2).sum(axis=0))
+        return spread(self.rates, self.patterns[name].values)
 
     def range_by_source(self) -> tuple[np.ndarray, np.ndarray]:
         """Lowest and highest rate (source, site) in mm yr-1 if each source's mass sat in one cell of it."""
@@ -71,38 +59,19 @@ class Answer:
     def global_mean(self) -> tuple[float, float]:
         """Barystatic rate and its standard uncertainty, mm yr-1."""
         factor = self.prepared.gigatonnes_per_millimetre
-        spread = self._spread(np.ones((len(self.rates), 1)))
-        return -float(self.rates["mass_rate"].sum()) / factor, float(spread[0]) / factor
+        sigma = spread(self.rates, np.ones((len(self.rates), 1)))
+        return -float(self.rates["mass_rate"].sum()) / factor, float(sigma[0]) / factor
 
 
-def _rates(rates_file: Path | None, published_set: str | None) -> pd.DataFrame:
-    """Mass rates from a file or a published set, no ice counted twice."""
-    if (rates_file is None) == (published_set is None):
-        raise InputError(
-            "rates: give either --rates FILE or --published SET. massfingerprint ledger published lists the sets."
-        )
-    rates = read_rates(rates_file) if rates_file is not None else published_rates(str(published_set))
-    unknown = [source for source in rates["source"] if source not in region_names()]
-    if published_set is not None and unknown:
-        raise InputError(
-            f"set {published_set!r}: {unknown[0]!r} has no outline to spread mass over. Choose a set by region."
-        )
-    scopes = {source: scope for source, scope in zip(rates["source"], rates["scope"], strict=True) if scope}
-    check_scope(list(rates["source"]), scopes=scopes)
-    return rates
-
-
-def _answer(rates: pd.DataFrame, sites_file: Path, max_degree: int, spacing: float) -> Answer:
+def _answer(rates: pd.DataFrame, sites_file: Path, problem: Problem) -> Answer:
     sites = read_sites(sites_file)
     outlines = regions(*rates["source"])
-    ocean = ocean_fraction(spacing)
-    prepared = prepare_solver(ocean, love_numbers(max_degree=max(max_degree, LEAST_DEGREE)), max_degree=max_degree)
-    load = spread_mass(outlines, ocean)
-    patterns = solve_fingerprints(prepared, load, outputs=("relative_sea_level", "bedrock_up"))
+    prepared = problem.prepared(least_degree=LEAST_DEGREE)
+    load = spread_mass(outlines, problem.ocean)
     coarse = prepared
-    if max_degree > _RANGE_DEGREE:
-        coarse = prepare_solver(ocean, love_numbers(max_degree=_RANGE_DEGREE), max_degree=_RANGE_DEGREE)
-    here = smoothed(add_near_field(at_sites(patterns, sites), near_field(prepared, outlines, load, sites)))
+    if problem.max_degree > _RANGE_DEGREE:
+        coarse = problem.prepared(max_degree=_RANGE_DEGREE)
+    here = coast_values(prepared, outlines, load, sites)
     return Answer(rates, prepared, here, range_within(coarse, load, sites))
 
 
@@ -213,13 +182,7 @@ def _notes(answer: Answer) -> list[str]:
 
 
 @click.command(name="sites")
-@click.option(
-    "--rates",
-    "rates_file",
-    type=click.Path(path_type=Path),
-    help="CSV of mass rates, Gt/yr, negative = loss.",
-)
-@click.option("--published", "published_set", help="Use this set of published rates instead, e.g. 'otosaka 2023'.")
+@mass_rates_options
 @click.option(
     "--sites",
     "sites_file",
@@ -227,16 +190,7 @@ def _notes(answer: Answer) -> list[str]:
     type=click.Path(path_type=Path),
     help="CSV with columns site, lat, lon (degrees).",
 )
-@click.option(
-    "--max-degree",
-    default=512,
-    show_default=True,
-    type=click.IntRange(2, 4096),
-    help="Spherical-harmonic degree of the solution.",
-)
-@click.option(
-    "--spacing", default=0.25, show_default=True, type=float, help="Grid spacing in degrees; must divide 180."
-)
+@problem_options
 @click.option(
     "--csv",
     "csv_file",
@@ -244,18 +198,16 @@ def _notes(answer: Answer) -> list[str]:
     help="Also write the table here, one row per site, full numbers.",
 )
 def command(
-    rates_file: Path | None,
-    published_set: str | None,
+    rates: pd.DataFrame,
     sites_file: Path,
-    max_degree: int,
-    spacing: float,
+    problem: Problem,
     csv_file: Path | None,
 ) -> None:
     """Print relative sea level in mm/yr at coasts, by mass source, from mass rates in Gt/yr.
 
     Example: massfingerprint sites --rates data_small/published_rates.csv --sites data_small/coasts.csv
     """
-    answer = _answer(_rates(rates_file, published_set), sites_file, max_degree, spacing)
+    answer = _answer(rates, sites_file, problem)
     table = _table(answer)
     if csv_file is not None:
         write_text(table.to_csv(index=False, lineterminator="\n"), csv_file)

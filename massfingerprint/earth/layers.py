@@ -1,26 +1,23 @@
-"""Layered spherical Earth models: density and elastic moduli as functions of radius.
-
-PREM after Dziewonski & Anderson (1981), Phys. Earth Planet. Inter. 25:297, Table 1 (polynomials, from memory, held against the
-tabulated model of a seismology package by the tests). Between 24.4 and 220 km depth the isotropic (Voigt) average of the
-transversely isotropic moduli is taken, at the reference period of 1 s. The ocean is replaced by the upper crust.
-"""
+"""Layered spherical Earth models: density and elastic moduli as functions of radius, from whatever describes them."""
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
+from massfingerprint.arguments import real_number
 from massfingerprint.constants import GRAVITATIONAL_CONSTANT, SPHERE_RADIUS
+from massfingerprint.errors import InputError
 
 Array = NDArray[np.float64]
 
 
 @dataclass(frozen=True)
 class Layer:
-    """One spherical shell; each property is a polynomial in x = radius / surface radius, lowest power first.
+    """One spherical shell; each property is a polynomial in x = radius / the model's unit radius, lowest power first.
 
     Parameters
     ----------
@@ -28,19 +25,30 @@ class Layer:
         Radii in m.
     density : tuple of float
         kg m-3.
-    speeds : dict
-        Wave speeds in m s-1 as polynomials: ``p`` and ``s``, or ``pv ph sv sh`` and the dimensionless ``eta``.
+    elastic : dict
+        Wave speeds in m s-1 as polynomials, ``p`` and ``s``, or ``pv ph sv sh`` and the dimensionless ``eta``; or moduli in Pa:
+        ``rigidity`` and ``bulk``, or ``rigidity`` and ``first_lame``.
+    q_shear, q_bulk : float or None
+        Quality factors of shear and compression; None = no loss.
+    viscosity : float or None
+        Pa s; carried for readers of the model, the elastic answer does not use it.
+    factors : (float, float)
+        On the bulk modulus and the rigidity, for another period than that of the description.
     """
 
     inner: float
     outer: float
     density: tuple[float, ...]
-    speeds: Mapping[str, tuple[float, ...]] = field(hash=False)
+    elastic: Mapping[str, tuple[float, ...]] = field(hash=False)
+    q_shear: float | None = None
+    q_bulk: float | None = None
+    viscosity: float | None = None
+    factors: tuple[float, float] = (1.0, 1.0)
 
     @property
     def fluid(self) -> bool:
         """Whether the shell carries no shear."""
-        return all(not any(self.speeds.get(name, ())) for name in ("s", "sv", "sh"))
+        return all(not any(self.elastic.get(name, ())) for name in ("s", "sv", "sh", "rigidity"))
 
 
 @dataclass(frozen=True)
@@ -55,20 +63,27 @@ class EarthModel:
         From the centre outwards, without gaps.
     source : str
         Publication and choices made.
+    unit_radius : float, optional
+        m, what the polynomials count radii in; the surface radius by default.
     """
 
     name: str
     layers: tuple[Layer, ...]
     source: str
+    unit_radius: float | None = None
 
     @property
     def radius(self) -> float:
         """Surface radius in m."""
         return self.layers[-1].outer
 
+    @property
+    def _unit(self) -> float:
+        return self.radius if self.unit_radius is None else self.unit_radius
+
     def density(self, layer: int, radius: Array) -> Array:
         """Density (same shape as ``radius``), kg m-3, of one shell at radii in m."""
-        return _polynomial(self.layers[layer].density, radius / self.radius)
+        return _polynomial(self.layers[layer].density, radius / self._unit)
 
     def moduli(self, layer: int, radius: Array) -> tuple[Array, Array]:
         """First Lame parameter and rigidity of one shell at radii in m; Pa, isotropic (Voigt) average where needed.
@@ -76,15 +91,12 @@ class EarthModel:
         Source: Voigt average, Dziewonski & Anderson 1981, eq. (from memory):
         kappa = (4A + C + 4F - 4N)/9, mu = (A + C - 2F + 5N + 6L)/15.
         """
-        shell, x = self.layers[layer], radius / self.radius
-        density = _polynomial(shell.density, x)
-        square = {name: density * _polynomial(c, x) ** 2 for name, c in shell.speeds.items() if name != "eta"}
-        if "p" in square:
-            return square["p"] - 2.0 * square["s"], square["s"]
-        a, c, el, n = square["ph"], square["pv"], square["sv"], square["sh"]
-        f = _polynomial(shell.speeds["eta"], x) * (a - 2.0 * el)
-        bulk = (4.0 * a + c + 4.0 * f - 4.0 * n) / 9.0
-        rigidity = (a + c - 2.0 * f + 5.0 * n + 6.0 * el) / 15.0
+        shell, x = self.layers[layer], radius / self._unit
+        first, rigidity = _described(shell, x)
+        if shell.factors == (1.0, 1.0):
+            return first, rigidity
+        on_bulk, on_rigidity = shell.factors
+        bulk, rigidity = on_bulk * (first + 2.0 / 3.0 * rigidity), on_rigidity * rigidity
         return bulk - 2.0 / 3.0 * rigidity, rigidity
 
     def wave_speeds(self, layer: int, radius: Array) -> tuple[Array, Array]:
@@ -94,7 +106,7 @@ class EarthModel:
         return np.sqrt((first + 2.0 * rigidity) / density), np.sqrt(rigidity / density)
 
     def _shell_integral(self, layer: int, radius: Array, power: int) -> Array:
-        shell, a = self.layers[layer], self.radius
+        shell, a = self.layers[layer], self._unit
         degrees = np.arange(len(shell.density))
         coefficients = np.zeros(degrees.size + power + 1)
         coefficients[power + 1 :] = np.asarray(shell.density) / (degrees + power + 1)
@@ -142,58 +154,68 @@ class EarthModel:
         )
 
 
+def _described(shell: Layer, x: Array) -> tuple[Array, Array]:
+    """First Lame parameter and rigidity, Pa, as the shell is described."""
+    given = shell.elastic
+    if "rigidity" in given:
+        rigidity = _polynomial(given["rigidity"], x)
+        if "first_lame" in given:
+            return _polynomial(given["first_lame"], x), rigidity
+        return _polynomial(given["bulk"], x) - 2.0 / 3.0 * rigidity, rigidity
+    density = _polynomial(shell.density, x)
+    square = {name: density * _polynomial(c, x) ** 2 for name, c in given.items() if name != "eta"}
+    if "p" in square:
+        return square["p"] - 2.0 * square["s"], square["s"]
+    a, c, el, n = square["ph"], square["pv"], square["sv"], square["sh"]
+    f = _polynomial(given["eta"], x) * (a - 2.0 * el)
+    bulk = (4.0 * a + c + 4.0 * f - 4.0 * n) / 9.0
+    rigidity = (a + c - 2.0 * f + 5.0 * n + 6.0 * el) / 15.0
+    return bulk - 2.0 / 3.0 * rigidity, rigidity
+
+
+def at_period(model: EarthModel, period: float, *, reference_period: float = 1.0) -> EarthModel:
+    """The model as waves or loads of another period see it, softened by its quality factors.
+
+    Parameters
+    ----------
+    model : EarthModel
+        With ``q_shear`` and ``q_bulk`` in its shells.
+    period, reference_period : float
+        s, of the answer and of the model as it is described; 0.1 to 100000.
+
+    Returns
+    -------
+    EarthModel
+        Moduli times (1 - ln(T/T0) / (pi Q))^2, named after the period.
+
+    Raises
+    ------
+    InputError
+        If the period is out of range or no shell has a quality factor.
+
+    Source
+    ------
+    Absorption band of constant Q: Dziewonski & Anderson 1981, section 6 (speeds times 1 - ln T/(pi Q)), from memory.
+    """
+    real_number(period, argument="period", allowed="0.1 to 100000 s", low=0.1, high=1e5)
+    if period == reference_period:
+        return model
+    if all(shell.q_shear is None and shell.q_bulk is None for shell in model.layers):
+        raise InputError(
+            f"period: {model.name} has no quality factors, so it is the same at {period:g} s. Leave it out."
+        )
+    turns = math.log(period / reference_period) / math.pi
+
+    def factor(quality: float | None) -> float:
+        return 1.0 if quality is None else (1.0 - turns / quality) ** 2
+
+    shells = tuple(replace(shell, factors=(factor(shell.q_bulk), factor(shell.q_shear))) for shell in model.layers)
+    words = f"{model.source}, at {period:g} s by its Q"
+    return replace(model, name=f"{model.name}_{period:g}s", layers=shells, source=words)
+
+
 def _polynomial(coefficients: Array | tuple[float, ...], x: Array) -> Array:
     return np.asarray(np.polynomial.polynomial.polyval(x, np.asarray(coefficients, dtype=np.float64)), dtype=np.float64)
-
-
-def _shell(inner: float, outer: float, density: tuple[float, ...], **speeds: tuple[float, ...]) -> Layer:
-    """Shell from published units: km, g cm-3, km s-1 (``eta`` is dimensionless)."""
-    metric = {name: tuple(v * (1.0 if name == "eta" else 1e3) for v in c) for name, c in speeds.items()}
-    return Layer(inner * 1e3, outer * 1e3, tuple(1e3 * v for v in density), metric)
-
-
-_LOWER_MANTLE = (7.9565, -6.4761, 5.5283, -3.0807)
-_UPPERMOST_MANTLE = {
-    "pv": (0.8317, 7.2180),
-    "ph": (3.5908, 4.6172),
-    "sv": (5.8582, -1.4678),
-    "sh": (-1.0839, 5.7176),
-    "eta": (3.3687, -2.4778),
-}
-
-
-def prem() -> EarthModel:
-    """PREM, isotropic (Voigt), 1 s, ocean replaced by upper crust to 6371 km."""
-    shells = (
-        _shell(0.0, 1221.5, (13.0885, 0.0, -8.8381), p=(11.2622, 0.0, -6.3640), s=(3.6678, 0.0, -4.4475)),
-        _shell(1221.5, 3480.0, (12.5815, -1.2638, -3.6426, -5.5281), p=(11.0487, -4.0362, 4.8023, -13.5732), s=(0.0,)),
-        _shell(
-            3480.0, 3630.0, _LOWER_MANTLE, p=(15.3891, -5.3181, 5.5242, -2.5514), s=(6.9254, 1.4672, -2.0834, 0.9783)
-        ),
-        _shell(
-            3630.0,
-            5600.0,
-            _LOWER_MANTLE,
-            p=(24.9520, -40.4673, 51.4832, -26.6419),
-            s=(11.1671, -13.7818, 17.4575, -9.2777),
-        ),
-        _shell(
-            5600.0,
-            5701.0,
-            _LOWER_MANTLE,
-            p=(29.2766, -23.6027, 5.5242, -2.5514),
-            s=(22.3459, -17.2473, -2.0834, 0.9783),
-        ),
-        _shell(5701.0, 5771.0, (5.3197, -1.4836), p=(19.0957, -9.8672), s=(9.9839, -4.9324)),
-        _shell(5771.0, 5971.0, (11.2494, -8.0298), p=(39.7027, -32.6166), s=(22.3512, -18.5856)),
-        _shell(5971.0, 6151.0, (7.1089, -3.8045), p=(20.3926, -12.2569), s=(8.9496, -4.4597)),
-        _shell(6151.0, 6346.6, (2.6910, 0.6924), **_UPPERMOST_MANTLE),
-        _shell(6346.6, 6356.0, (2.900,), p=(6.800,), s=(3.900,)),
-        _shell(6356.0, SPHERE_RADIUS.value / 1e3, (2.600,), p=(5.800,), s=(3.200,)),
-    )
-    return EarthModel(
-        "prem", shells, "PREM (Dziewonski & Anderson 1981), isotropic Voigt average, 1 s, ocean replaced by upper crust"
-    )
 
 
 def homogeneous(density: float, rigidity: float, first_lame: float, radius: float = SPHERE_RADIUS.value) -> EarthModel:

@@ -8,10 +8,10 @@ from massfingerprint.bundled import open_bundled
 from massfingerprint.constants import GRAVITATIONAL_CONSTANT
 from massfingerprint.earth._by_degree import numbers_by_degree, tail
 from massfingerprint.earth._radial import surface_numbers
-from massfingerprint.earth.layers import EarthModel, prem
+from massfingerprint.earth.layers import EarthModel
+from massfingerprint.earth.models import MODELS
 from massfingerprint.errors import InputError
 
-MODELS = {"prem": prem}
 _SHIPPED = "prem"
 _MEANING = {
     "h_load": "load Love number h', vertical",
@@ -144,7 +144,8 @@ def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool
     Parameters
     ----------
     model : str
-        ``"prem"``: isotropic (Voigt), 1 s, the ocean replaced by upper crust to 6371 km.
+        Name of a built-in Earth (``earth.models.MODELS``); ``"prem"``: isotropic (Voigt), 1 s, the ocean replaced by upper crust
+        to 6371 km.
     max_degree : int
         Highest degree, 1 to 40000. The shipped table of PREM ends at 2048; all else is computed, in half a second.
     recompute : bool
@@ -167,5 +168,5 @@ def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool
     if model == _SHIPPED and not recompute:
         shipped = open_bundled(f"love_numbers_{model}.nc")
         if max_degree < shipped.sizes["degree"]:
-            return shipped.isel(degree=slice(0, max_degree + 1)).assign_attrs(half_space_limits(MODELS[model]()))
-    return compute_love_numbers(MODELS[model](), max_degree, every_degree=recompute)
+            return shipped.isel(degree=slice(0, max_degree + 1)).assign_attrs(half_space_limits(MODELS[model].make()))
+    return compute_love_numbers(MODELS[model].make(), max_degree, every_degree=recompute)

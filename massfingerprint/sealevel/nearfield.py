@@ -269,13 +269,15 @@ def smoothed(values: xr.Dataset) -> xr.Dataset:
     Returns
     -------
     Dataset (source, site)
-        ``<name>`` the tapered or completed value; ``<name>_truncation`` the plain value minus the tapered one, or the step of the
-        near field's integral; no ``<name>_tapered``.
+        ``<name>`` the tapered or completed value (fields without a near field, as gravity, are tapered everywhere);
+        ``<name>_truncation`` the plain value minus the tapered one, or the step of the near field's integral; no
+        ``<name>_tapered``.
     """
     out = values
-    for name in (name for name in NEAR_FIELDS if name in values):
+    for name in (str(label).removesuffix("_tapered") for label in values.data_vars if str(label).endswith("_tapered")):
         smooth, plain = values[f"{name}_tapered"], values[name]
-        change = xr.where(values["near_field"] == 1, values[f"{name}_truncation"], plain - smooth)
+        completed = (values["near_field"] == 1) & (name in NEAR_FIELDS)
+        change = xr.where(completed, values[f"{name}_truncation"], plain - smooth)
         words = f"{name.replace('_', ' ')}: untapered minus tapered, or the step of the near field's integral"
         out = out.drop_vars(f"{name}_tapered")
         out[name] = smooth.assign_attrs(plain.attrs)

@@ -9,7 +9,7 @@ Source: Dahlen 1974, Geophys. J. 36:363 for the fluid; Alterman, Jarosch & Peker
 import numpy as np
 from scipy.integrate import solve_ivp
 
-from massfingerprint.earth.layers import prem
+from massfingerprint.earth.prem import prem
 
 MODEL = prem()
 PRESSURE = MODEL.mean_density * MODEL.surface_gravity * MODEL.radius
@@ -22,8 +22,10 @@ def _scaled(layer):
     inner = shell.inner / MODEL.radius
     below = float(MODEL.enclosed_mass(layer, np.array(shell.inner))) / MODEL.mass / 3.0
     below -= sum(c * inner ** (i + 3) / (i + 3) for i, c in enumerate(density))
-    speeds = {k: [c * (MODEL.mean_density / PRESSURE) ** 0.5 for c in v] for k, v in shell.speeds.items() if k != "eta"}
-    return density, below, speeds, shell.speeds.get("eta")
+    speeds = {
+        k: [c * (MODEL.mean_density / PRESSURE) ** 0.5 for c in v] for k, v in shell.elastic.items() if k != "eta"
+    }
+    return density, below, speeds, shell.elastic.get("eta")
 
 
 def _value(coefficients, r):

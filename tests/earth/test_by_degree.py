@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 
 from massfingerprint.earth._radial import numbers_at
-from massfingerprint.earth.layers import homogeneous, prem
+from massfingerprint.earth.layers import homogeneous
 from massfingerprint.earth.love import compute_love_numbers, extend_love_numbers, love_numbers
+from massfingerprint.earth.prem import prem
 from massfingerprint.errors import InputError
 
 NAMES = ("h_load", "l_load", "k_load", "h_tide", "l_tide", "k_tide")

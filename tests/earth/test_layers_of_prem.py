@@ -6,7 +6,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from massfingerprint.earth.layers import EarthModel, Layer, homogeneous, prem
+from massfingerprint.earth.layers import EarthModel, Layer, homogeneous
+from massfingerprint.earth.prem import prem
 
 MODEL = prem()
 ROUNDING = 1e-4  # the table normalised radii to five digits: 5e-6 times slopes of up to 20 km/s per radius

@@ -7,8 +7,9 @@ import pytest
 
 from massfingerprint.earth import _radial
 from massfingerprint.earth._radial import surface_numbers
-from massfingerprint.earth.layers import homogeneous, prem
+from massfingerprint.earth.layers import homogeneous
 from massfingerprint.earth.love import compute_love_numbers, love_numbers
+from massfingerprint.earth.prem import prem
 from massfingerprint.errors import InputError
 from tests.earth.second_method import load_and_tide
 
