@@ -34,6 +34,10 @@ FRESH_WATER_DENSITY = Constant(1000.0, "kg m-3", 0.0, "convention of barystatic 
 ROTATION_RATE = Constant(7.292115e-5, "rad s-1", 0.0, "IERS Conventions (2010), Table 1.1")
 SECULAR_LOVE_NUMBER = Constant(0.9382, "1", 0.0, "from the observed flattening (k_s)")
 POLAR_MOMENT_OF_INERTIA = Constant(8.0365e37, "kg m2", 0.0, "Gross 2007, Treatise on Geophysics (from memory)")
+EARTH_MASS = Constant(5.9722e24, "kg", 0.0006e24, "Astronomical Almanac: GM over G (from memory)")
+MEAN_MOMENT_OF_INERTIA = Constant(
+    (8.0101 + 8.0103 + 8.0365) / 3.0 * 1e37, "kg m2", 0.0, "(A+B+C)/3, Gross 2007, Treatise on Geophysics (from memory)"
+)
 MOMENT_OF_INERTIA_EXCESS = Constant(2.630e35, "kg m2", 0.0, "C - (A+B)/2, from Gross 2007 (from memory)")
 SECONDS_PER_DAY = Constant(86400.0, "s", 0.0, "definition of the nominal day")
 KILOGRAMS_PER_GIGATONNE = Constant(1.0e12, "kg Gt-1", 0.0, "definition")

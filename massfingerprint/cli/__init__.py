@@ -11,8 +11,9 @@ from massfingerprint import __version__
 from massfingerprint.errors import MassFingerprintError
 
 _COMMANDS = {
+    "choices": "How far coasts move with the Earth, rotation, water, latitude, coastline: a table.",
     "explain": "Where a number of a study comes from: inputs, formula, factor, citation, checksum.",
-    "earth": "Love numbers of the built-in Earth.",
+    "earth": "Earths: list, compute their Love numbers, compare, export, plot.",
     "kernel": "What a gigatonne lost anywhere does at a coast: ranked, with range, map.",
     "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
     "sites": "Sea level at named coasts from published mass rates.",

@@ -8,6 +8,7 @@ import click
 
 _STAGES = {
     "kernels": "solving kernels",
+    "choices": "solving choices",
     "patterns": "solving patterns",
     "sites": "values at sites",
     "series": "series and rates",

@@ -24,7 +24,7 @@ _LAW_HOLDS = 5e-3  # of h' over the last octave; its error at twice the degree i
 
 
 def numbers_by_degree(
-    model: EarthModel, max_degree: int, *, limits: tuple[float, float, float], refinement: float = 1.0
+    model: EarthModel, max_degree: int, *, limits: tuple[float, ...], refinement: float = 1.0
 ) -> SurfaceNumbers:
     """Load and tide Love numbers of all degrees from 0 to ``max_degree``, as ``surface_numbers``.
 
@@ -34,7 +34,7 @@ def numbers_by_degree(
         Shells with a solid surface.
     max_degree : int
         1 or more.
-    limits : (float, float, float)
+    limits : tuple of three floats
         Half-space limits of h', n l' and n k'.
     refinement : float
         Factor on the number of steps.
@@ -51,7 +51,8 @@ def numbers_by_degree(
         last = min(2 * first, max(max_degree, first + 1))
         table[:, first + 1 : last + 1] = _octave(model, first, last, refinement)
         first = last
-    return SurfaceNumbers(*table, degree_one_defect=defect)
+    h_load, l_load, k_load, h_tide, l_tide, k_tide = table
+    return SurfaceNumbers(h_load, l_load, k_load, h_tide, l_tide, k_tide, defect)
 
 
 def _octave(model: EarthModel, first: int, last: int, refinement: float) -> Array:
@@ -68,7 +69,7 @@ def _octave(model: EarthModel, first: int, last: int, refinement: float) -> Arra
     return np.asarray(chebyshev.chebval(where, series) / degree**_POWERS, dtype=np.float64)
 
 
-def _law_holds(table: Array, limits: tuple[float, float, float]) -> bool:
+def _law_holds(table: Array, limits: tuple[float, ...]) -> bool:
     """Whether the tail that joins at the end of a table already describes h' half-way there."""
     last = table.shape[1] - 1
     half = last // 2
@@ -76,7 +77,7 @@ def _law_holds(table: Array, limits: tuple[float, float, float]) -> bool:
     return bool(abs(limits[0] + step / half - table[0, half]) <= _LAW_HOLDS * abs(table[0, half]))
 
 
-def tail(table: Array, max_degree: int, limits: tuple[float, float, float]) -> Array:
+def tail(table: Array, max_degree: int, limits: tuple[float, ...]) -> Array:
     """Numbers (6, n) of the degrees after the end of a table (6, last + 1) up to ``max_degree``.
 
     h', n l' and n k' go to their limits as 1/n; n h follows from k = k' + h with n^2 k constant, n^2 l is constant, too.

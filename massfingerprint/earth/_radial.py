@@ -290,7 +290,8 @@ def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1
     table[3:, 1] = 0.0
     table[2, 1] = 0.0
     table[0, 0] = _degree_zero(model, refinement)
-    return SurfaceNumbers(*table, degree_one_defect=defect)
+    h_load, l_load, k_load, h_tide, l_tide, k_tide = table
+    return SurfaceNumbers(h_load, l_load, k_load, h_tide, l_tide, k_tide, defect)
 
 
 def numbers_at(model: EarthModel, degrees: Array, *, refinement: float = 1.0) -> Array:

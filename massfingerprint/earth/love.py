@@ -1,5 +1,7 @@
 """Load and tide Love numbers as labelled tables: the shipped one, or computed afresh."""
 
+from functools import lru_cache
+
 import numpy as np
 import xarray as xr
 
@@ -163,10 +165,17 @@ def love_numbers(model: str = "prem", *, max_degree: int = 1024, recompute: bool
     InputError
         If the model is unknown or the degree is not a whole number of 1 or more.
     """
-    one_of(model, tuple(MODELS), argument="model", kind="Earth named")
+    one_of(model, tuple(MODELS), argument="earth", kind="Earth named")
     _checked_degree(max_degree)
     if model == _SHIPPED and not recompute:
         shipped = open_bundled(f"love_numbers_{model}.nc")
         if max_degree < shipped.sizes["degree"]:
             return shipped.isel(degree=slice(0, max_degree + 1)).assign_attrs(half_space_limits(MODELS[model].make()))
-    return compute_love_numbers(MODELS[model].make(), max_degree, every_degree=recompute)
+    if recompute:
+        return compute_love_numbers(MODELS[model].make(), max_degree, every_degree=True)
+    return _computed(model, max_degree).copy(deep=True)
+
+
+@lru_cache(maxsize=16)
+def _computed(model: str, max_degree: int) -> xr.Dataset:
+    return compute_love_numbers(MODELS[model].make(), max_degree)

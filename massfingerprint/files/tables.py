@@ -12,6 +12,7 @@ from massfingerprint import vocabulary
 from massfingerprint.errors import MissingFileError, TableError, nearest_names
 
 _HEADER = re.compile(r"^(?P<name>[^\[\]]+?)\s*(?:\[(?P<unit>[^\[\]]*)\])?$")
+_SPACED_HEADER = re.compile(r"([^\s\[\]]+)\s*(\[[^\[\]]*\])?")
 _RATE_COLUMNS = ("time_start", "time_end", "source", "mass_rate", "mass_rate_sigma", "citation")
 
 
@@ -56,6 +57,66 @@ def read_table(path: str | os.PathLike[str], *, required: tuple[str, ...]) -> tu
     if frame.empty:
         raise TableError(f"{source}: has a header but no rows.")
     return frame, units
+
+
+def read_columns(path: str | os.PathLike[str], *, required: tuple[str, ...]) -> tuple[pd.DataFrame, dict[str, str]]:
+    """Read a table whose columns stand apart by commas or by blanks; which of them, the header tells.
+
+    Parameters
+    ----------
+    path : path
+        As :func:`read_table`. Apart by blanks: the header reads ``radius [km]  density [g cm-3]``, lines that start with ``#`` are
+        comments, and the last comment above the numbers is the header if no other line is.
+    required : tuple of str
+        Column names, without unit, that must be there.
+
+    Returns
+    -------
+    (DataFrame, dict)
+        As :func:`read_table`.
+
+    Raises
+    ------
+    MissingFileError, TableError
+        As :func:`read_table`; also if a row has not as many cells as the header.
+    """
+    source = Path(path)
+    data = source.read_bytes() if source.is_file() else b""
+    lines = data.decode("utf-8-sig", errors="replace").splitlines()
+    header = next((line for line in lines if line.strip() and not line.lstrip().startswith("#")), "")
+    if "," in header or not header.strip() or "\ufffd" in "".join(lines):
+        return read_table(source, required=required)
+    rows = {number: line.split() for number, line in enumerate(lines, 1) if line.strip()}
+    comments = [number for number, cells in rows.items() if cells[0].startswith("#")]
+    cells = {number: row for number, row in rows.items() if number not in comments}
+    first = min(cells)
+    if _is_number(cells[first][0]):  # no plain header: the last comment above is one
+        above = [lines[number - 1].lstrip("# \t") for number in comments if number < first]
+        if not above:
+            raise TableError(f"{source}: line {first}: holds numbers where the names of the columns should stand.")
+        header = above[-1]
+    else:
+        del cells[first]
+    names = [f"{name} {unit}".strip() for name, unit in _SPACED_HEADER.findall(header)]
+    for number, row in cells.items():
+        if len(row) != len(names):
+            raise TableError(
+                f"{source}: line {number}: has {len(row)} cells, the header {len(names)} columns. Write '-' for a gap."
+            )
+    frame = pd.DataFrame(list(cells.values()), index=list(cells), columns=names, dtype=str).replace("-", "")
+    frame, units = _split_headers(frame, source)
+    _check_columns(frame, required, source)
+    if frame.empty:
+        raise TableError(f"{source}: has a header but no rows.")
+    return frame, units
+
+
+def _is_number(cell: str) -> bool:
+    try:
+        float(cell)
+    except ValueError:
+        return False
+    return True
 
 
 def _split_headers(frame: pd.DataFrame, source: Path) -> tuple[pd.DataFrame, dict[str, str]]:

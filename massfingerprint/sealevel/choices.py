@@ -5,7 +5,7 @@ of its own: the built-in Earths are examples, not draws. It says which choice ma
 """
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 
 import geopandas as gpd
 import numpy as np
@@ -14,9 +14,9 @@ import xarray as xr
 
 from massfingerprint import constants
 from massfingerprint.arguments import whole_number
-from massfingerprint.earth.choice import earth_love_numbers
+from massfingerprint.earth.choice import ChosenEarth
 from massfingerprint.earth.green import LEAST_DEGREE
-from massfingerprint.earth.love import MODELS
+from massfingerprint.earth.models import MODELS
 from massfingerprint.earth.rotation import OBSERVED, RotationConstants
 from massfingerprint.errors import InputError
 from massfingerprint.load.latitudes import geocentric_ocean, geocentric_outlines, geocentric_sites
@@ -26,7 +26,8 @@ from massfingerprint.sealevel.coasts import coast_values
 from massfingerprint.sealevel.solver import prepare_solver
 
 SEA_WATER_DENSITY = 1027.0
-_HYDROSTATIC = 0.930
+_HYDROSTATIC = 0.930  # fluid Love number of PREM under a thin lithosphere (from memory)
+FOR_CHECKS = ("homogeneous", "five_layer")  # Earths nobody believes
 
 
 @dataclass(frozen=True)
@@ -35,7 +36,7 @@ class Physics:
 
     Parameters
     ----------
-    earth : str
+    earth : ChosenEarth
         Built-in Earth, or a file.
     max_degree : int
         Of the solution.
@@ -51,7 +52,7 @@ class Physics:
         As in ``ocean_fraction``.
     """
 
-    earth: str = "prem"
+    earth: ChosenEarth = field(default_factory=ChosenEarth)
     max_degree: int = 512
     spacing: float = 0.25
     rotation: bool | RotationConstants = True
@@ -69,7 +70,7 @@ def other_choices(usual: Physics) -> dict[tuple[str, str], Physics]:
         / (constants.SPHERE_RADIUS.value**5 * OBSERVED.rotation_rate**2)
     )
     half = max(usual.max_degree // 2, 2)
-    out = {("Earth", name): replace(usual, earth=name) for name in MODELS if name != usual.earth}
+    out = {("Earth", name): replace(usual, earth=ChosenEarth(name)) for name in MODELS if name != usual.earth.word}
     for label, value in (("from the moments", flattening), ("hydrostatic", _HYDROSTATIC)):
         turned = RotationConstants(secular_love_number=value)
         out["rotation", f"k_s {value:.3f}, {label}"] = replace(usual, rotation=turned)
@@ -88,6 +89,7 @@ def choice_table(
     sites: pd.DataFrame,
     *,
     usual: Physics | None = None,
+    others: Mapping[tuple[str, str], Physics] | None = None,
     progress: Callable[[int, int], None] | None = None,
 ) -> xr.Dataset:
     """Relative sea level at sites with the usual physics, and how each other choice changes it.
@@ -102,6 +104,8 @@ def choice_table(
         Columns site, lat, lon.
     usual : Physics, optional
         What the others are held against.
+    others : mapping of (group, chosen) to Physics, optional
+        By default :func:`other_choices` of the usual.
     progress : callable, optional
         Told (done, total) after every choice.
 
@@ -123,7 +127,7 @@ def choice_table(
     if sorted(names) != sorted(mass):
         raise InputError(f"mass: must be given for {', '.join(names)}, got {', '.join(mass) or 'nothing'}.")
     amounts = np.array([float(mass[name]) for name in names])
-    others = other_choices(usual)
+    others = other_choices(usual) if others is None else others
     rows: list[np.ndarray] = []
     mean = np.nan
     for number, physics in enumerate((usual, *others.values())):
@@ -143,7 +147,7 @@ def choice_table(
     changed = np.stack(rows[1:]) - rows[0]
     out["change"] = (("choice", "site"), changed, words | {"long_name": "change of relative sea level with the choice"})
     out["mean"] = ((), mean, words | {"long_name": "barystatic sea level"})
-    return out.assign_attrs(earth=usual.earth, max_degree=usual.max_degree, spacing=usual.spacing)
+    return out.assign_attrs(earth=str(usual.earth), max_degree=usual.max_degree, spacing=usual.spacing)
 
 
 def _levels(
@@ -153,7 +157,7 @@ def _levels(
     ocean = ocean_fraction(physics.spacing, coastline=physics.coastline)
     if physics.geocentric:
         ocean, outlines, sites = geocentric_ocean(ocean), geocentric_outlines(outlines), geocentric_sites(sites)
-    love = earth_love_numbers(physics.earth, max_degree=max(physics.max_degree, LEAST_DEGREE))
+    love = physics.earth.love_numbers(max_degree=max(physics.max_degree, LEAST_DEGREE))
     prepared = prepare_solver(
         ocean,
         love,
@@ -178,16 +182,16 @@ def spread_by_group(table: xr.Dataset) -> xr.Dataset:
     Returns
     -------
     Dataset (group, site)
-        ``lowest`` (0 or less), ``highest`` (0 or more), ``together`` (site), in the unit of the table; ``together`` leaves out
-        switching the rotation off, which no one doubts.
+        ``lowest`` (0 or less), ``highest`` (0 or more), ``together`` (site), in the unit of the table; all leave out
+        the Earths made for checks and switching the rotation off, which no one doubts.
     """
     groups = list(dict.fromkeys(table["group"].values))
-    kept = table.where(table["chosen"] != "none", 0.0)["change"]
+    kept = table["change"].where(~table["chosen"].isin(["none", *FOR_CHECKS]), 0.0)
     parts = [kept.where(table["group"] == group, 0.0) for group in groups]
     out = xr.Dataset(coords={"group": np.array(groups, dtype=object), "site": table["site"].values})
     for name, ends in (("lowest", [p.min("choice") for p in parts]), ("highest", [p.max("choice") for p in parts])):
         values = np.stack([end.values for end in ends])
         out[name] = (("group", "site"), np.minimum(values, 0.0) if name == "lowest" else np.maximum(values, 0.0))
-    largest = np.maximum(-out["lowest"], out["highest"])
+    largest = xr.where(-out["lowest"] > out["highest"], -out["lowest"], out["highest"])
     out["together"] = np.sqrt((largest**2).sum("group"))
     return out

@@ -231,6 +231,11 @@ def _held(name: str) -> str:
     return "bedrock_horizontal" if name in HORIZONTAL else name
 
 
+def coefficients_name(field: str) -> str:
+    """Name of the variable with the coefficients that a field is made from."""
+    return f"{_held(field)}_coefficients"
+
+
 class _Store:
     """Arrays of the results, filled load by load."""
 

@@ -90,7 +90,8 @@ def near_field(
     Raises
     ------
     InputError, SiteError
-        If the sources of outlines and load differ, the Love numbers end too early, or a choice cannot be used.
+        If the sources of outlines and load differ, a choice cannot be used, or the Love numbers end too early for a site beside
+        the ice.
     """
     check_frame(reference_frame)
     real_number(within, argument="within", allowed="a number of km from 0 to 20000", low=0.0, high=20000.0)
@@ -102,23 +103,28 @@ def near_field(
     values = np.zeros((2, 4, len(shapes), len(table)))  # with all rings and with half of them; four fields
     about = np.zeros((3, len(shapes), len(table)))
     about[2] = 1.0
-    tables = {
-        name: point_response_table(prepared.long_love, name, reference_frame=reference_frame)
-        for name in (*_DIRECT, _SIDEWAYS)
-    }
+    tables: dict[str, Any] = {}
     for row, (name, shape) in enumerate(shapes.items()):
-        held = _gridded(prepared, load.sel(source=name), table, reference_frame) if len(table) else None
+        held = None
         shapely.prepare(shape)
         for column, (_, lat, lon) in enumerate(table.itertuples(index=False)):
             view = _seen(shape, float(lat), float(lon))
             about[0, row, column] = view.nearest * _EARTH_KM
-            if view.nearest * _EARTH_KM > within or held is None:
+            if view.nearest * _EARTH_KM > within:
                 continue
+            tables = tables or _tables(prepared, reference_frame)
+            held = _gridded(prepared, load.sel(source=name), table, reference_frame) if held is None else held
             for half in (0, 1):
                 whole = _integrals(shape, view, (float(lat), float(lon)), tables, _RINGS // (half + 1))
                 values[half, :, row, column] = 1e3 * (whole - held[:, column])
             about[1:, row, column] = 1.0, float(view.edge > view.coarseness)
     return _dataset(values, about, load, table).assign_attrs(reference_frame=reference_frame, within=within)
+
+
+def _tables(prepared: Prepared, frame: str) -> dict[str, Any]:
+    """Green's functions of the fields that are integrated."""
+    names = (*_DIRECT, _SIDEWAYS)
+    return {name: point_response_table(prepared.long_love, name, reference_frame=frame) for name in names}
 
 
 def _gridded(prepared: Prepared, load: xr.DataArray, sites: pd.DataFrame, frame: str) -> Array:

@@ -137,6 +137,38 @@ def synthesise(coefficients: xr.DataArray, grid: Grid) -> xr.DataArray:
     )
 
 
+def gradient(coefficients: xr.DataArray, grid: Grid) -> tuple[xr.DataArray, xr.DataArray]:
+    """Surface gradient on the unit sphere, north and east, of a field given by real coefficients.
+
+    Parameters
+    ----------
+    coefficients : DataArray (..., part, coefficient)
+        As :func:`analyse` returns them.
+    grid : Grid
+        Where to evaluate.
+
+    Returns
+    -------
+    (DataArray, DataArray), each (..., lat, lon)
+        In the unit of the coefficients.
+
+    Raises
+    ------
+    InputError
+        If the coefficients are not laid out as this package does.
+    """
+    max_degree_of(coefficients)
+    alm = _transform.complex_from_real(np.asarray(coefficients.values, dtype=np.float64))
+    lead, shape = coefficients.dims[:-2], (grid.nlat, grid.nlon)
+    rows = alm.reshape((-1, alm.shape[-1]))
+    rings = np.stack([_transform.gradient(row, shape, grid.first_azimuth) for row in rows], axis=1)
+    both = grid.from_rings(rings).reshape((2, *alm.shape[:-1], *shape))
+    coords = {key: value for key, value in coefficients.coords.items() if set(value.dims) <= set(lead)}
+    coords |= {"lat": ("lat", grid.latitudes), "lon": ("lon", grid.longitudes)}
+    north, east = (xr.DataArray(part, dims=(*lead, "lat", "lon"), coords=coords) for part in both)
+    return north, east
+
+
 def _to_square(coefficients: xr.DataArray, scale: float) -> NDArray[np.float64]:
     if coefficients.ndim != 2:
         raise InputError(f"coefficients: one field at a time, got dimensions {coefficients.dims}. Select one first.")

@@ -95,6 +95,7 @@ def _opened(recipe: Recipe, notes: "Reading | _Collected") -> Inputs:
     since, moved = recipe.output.since, ledger
     if ledger is not None and since is not None:
         moved = notes.attempt(("output", "since"), _rebased, ledger, since)
+    notes.attempt(("earth",), recipe.earth.chosen.love_numbers, max_degree=2)
     sites = notes.attempt(("sites", "file"), read_sites, recipe.sites.file)
     named = None if ledger is None else [str(name) for name in ledger["source"].values]
     outlines = _outlines(recipe.regions, named, notes)

@@ -38,7 +38,7 @@ def now() -> str:
 def input_files(recipe: Recipe) -> dict[str, Path]:
     """Every file of the user's that a study reads, by what it is for."""
     named = {"study": recipe.source_file, "mass": recipe.mass.file, "sites": recipe.sites.file}
-    named["correlation"] = recipe.mass.correlation
+    named |= {"correlation": recipe.mass.correlation, "earth": recipe.earth.file}
     out = {key: path for key, path in named.items() if path is not None}
     return out | {f"outlines {number + 1}": path for number, path in enumerate(recipe.regions.outlines)}
 
@@ -79,7 +79,9 @@ def provenance(recipe: Recipe, inputs: Inputs, patterns: xr.Dataset, *, made: st
 
 def _choices(recipe: Recipe, inputs: Inputs, patterns: xr.Dataset) -> dict[str, Any]:
     return {
-        "earth": recipe.earth.model,
+        "earth": recipe.earth.model if recipe.earth.file is None else recipe.earth.file.name,
+        "period": recipe.earth.period,
+        "redistributed_density": recipe.earth.redistributed_density,
         "love_numbers": patterns.attrs["love_numbers"],
         "rotation": recipe.earth.rotation,
         "spacing": recipe.grid.spacing,

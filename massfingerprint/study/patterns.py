@@ -11,24 +11,23 @@ from numpy.typing import NDArray
 
 from massfingerprint import vocabulary
 from massfingerprint.earth.green import LEAST_DEGREE
-from massfingerprint.earth.love import love_numbers
 from massfingerprint.errors import DamagedFileError
 from massfingerprint.files.arrays import fetch, fingerprint_of, store
 from massfingerprint.load.ocean import ocean_fraction
 from massfingerprint.load.spread import spread_mass
-from massfingerprint.sealevel.fingerprints import LEVELS, solve_fingerprints
+from massfingerprint.sealevel.fingerprints import FIELDS, HORIZONTAL, coefficients_name, solve_fingerprints
 from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
 from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared, prepare_solver
 from massfingerprint.sealevel.within import range_within
 from massfingerprint.sphere.grids import grid_of
-from massfingerprint.sphere.harmonics import labelled, synthesise
+from massfingerprint.sphere.harmonics import gradient, labelled, synthesise
 from massfingerprint.study.inputs import Inputs
 from massfingerprint.study.recipe import Recipe
 
 SITE_FIELDS = ("relative_sea_level", "bedrock_up")  # sea surface at a site is their sum
 _RANGE_DEGREE = 256  # of the range within each source, which is smoothed anyway
-_LAYOUT = "patterns 1"  # of a kept entry; raise it whenever the solver's numbers or the entry change
+_LAYOUT = "patterns 2"  # of a kept entry; raise it whenever the solver's numbers or the entry change
 _SCALARS = (
     "polar_motion_x",
     "polar_motion_y",
@@ -59,7 +58,8 @@ class Problem:
         love = self.prepared.love
         tables = [love[name].values for name in ("h_load", "l_load", "k_load", "h_tide", "l_tide", "k_tide")]
         scalars = [repr(love.attrs[name]) for name in ("radius", "mean_density", "surface_gravity", "reference_frame")]
-        settings = [self.prepared.max_degree, self.prepared.rotation, self.prepared.water_density]
+        prepared = self.prepared
+        settings = [prepared.max_degree, prepared.rotation, prepared.water_density, prepared.redistributed_density]
         frame = recipe.output.reference_frame
         return fingerprint_of(_LAYOUT, self.ocean.values, *tables, *scalars, *map(repr, settings), frame)
 
@@ -68,8 +68,15 @@ def prepare(recipe: Recipe) -> Problem:
     """Ocean, Love numbers and solver of a recipe."""
     ocean = ocean_fraction(recipe.grid.spacing)
     degree = recipe.grid.max_degree
-    love = love_numbers(recipe.earth.model, max_degree=max(degree, LEAST_DEGREE))
-    return Problem(prepare_solver(ocean, love, max_degree=degree, rotation=recipe.earth.rotation), ocean)
+    return Problem(_prepared(recipe, ocean, degree, LEAST_DEGREE), ocean)
+
+
+def _prepared(recipe: Recipe, ocean: xr.DataArray, degree: int, least_degree: int = 0) -> Prepared:
+    """Solver of a recipe to a degree, with Love numbers to ``least_degree`` or more."""
+    earth = recipe.earth
+    love = earth.chosen.love_numbers(max_degree=max(degree, least_degree))
+    density = earth.redistributed_density
+    return prepare_solver(ocean, love, max_degree=degree, rotation=earth.rotation, redistributed_density=density)
 
 
 @dataclass(frozen=True)
@@ -118,7 +125,7 @@ def solve_patterns(
     RegionError, NotConvergedError
         If a source's outline cannot carry mass or a solve fails.
     """
-    fields = tuple(name for name in LEVELS if name in {*recipe.output.fields, *SITE_FIELDS})
+    fields = tuple(name for name in FIELDS if name in {*recipe.output.fields, *SITE_FIELDS})
     base = problem.fingerprint(recipe)
     pieces, loads, damaged, reused = [], [], [], 0
     for number in range(len(outlines)):
@@ -128,7 +135,7 @@ def solve_patterns(
             arrays = fetch(kept, key) if kept is not None else None
         except DamagedFileError as error:
             damaged.append(str(error))
-        if arrays is not None and all(f"{name}_coefficients" in arrays for name in fields):
+        if arrays is not None and all(coefficients_name(name) in arrays for name in fields):
             reused += 1
         else:
             arrays = _solved(problem, load, fields, recipe.output.reference_frame)
@@ -144,7 +151,7 @@ def solve_patterns(
 def _solved(problem: Problem, load: xr.DataArray, fields: tuple[str, ...], frame: str) -> dict[str, NDArray]:
     """Coefficients (part, coefficient) per field and the scalars of one source."""
     answer = solve_fingerprints(problem.prepared, load, outputs=fields, reference_frame=frame).isel(source=0)
-    out = {f"{name}_coefficients": answer[f"{name}_coefficients"].values for name in fields}
+    out = {label: answer[label].values for label in map(coefficients_name, fields)}
     return out | {name: answer[name].values for name in _SCALARS}
 
 
@@ -155,12 +162,14 @@ def _assembled(
     grid, sources = grid_of(load), load["source"]
     out = xr.Dataset(coords={"source": sources.values, "lat": load["lat"], "lon": load["lon"]})
     for name in fields:
-        label = f"{name}_coefficients"
+        label = coefficients_name(name)
         attrs = vocabulary.attributes(name, per_gigatonne=True)
         pairs = labelled(np.stack([piece[label] for piece in pieces]), ("source",), {"source": sources.values})
         if name in recipe.output.fields:
-            out[name] = synthesise(pairs, grid).assign_attrs(attrs).reset_coords(drop=True)
-        own = {"units": attrs["units"], "long_name": f"orthonormal coefficients of {attrs['long_name']}"}
+            made = gradient(pairs, grid)[HORIZONTAL.index(name)] if name in HORIZONTAL else synthesise(pairs, grid)
+            out[name] = made.assign_attrs(attrs).reset_coords(drop=True)
+        held = vocabulary.attributes(label.removesuffix("_coefficients"), per_gigatonne=True)
+        own = {"units": held["units"], "long_name": f"orthonormal coefficients of {held['long_name']}"}
         out[label] = pairs.assign_attrs(own)
     units = {name: vocabulary.attributes(name, per_gigatonne=True) for name in _SCALARS[:3]}
     words = {name: {"units": "1", "long_name": name.replace("_", " ")} for name in _SCALARS[3:]}
@@ -174,6 +183,7 @@ def _assembled(
         max_degree=prepared.max_degree,
         rotation="on" if prepared.rotation else "off",
         water_density=prepared.water_density,
+        redistributed_density=prepared.redistributed_density,
         ocean_area=prepared.ocean_area,
         gigatonnes_per_millimetre=prepared.gigatonnes_per_millimetre,
         love_numbers=str(prepared.love.attrs.get("source", "")),
@@ -195,6 +205,5 @@ def site_patterns(recipe: Recipe, problem: Problem, solved: Solved, inputs: Inpu
     out = smoothed(add_near_field(out, near))
     coarse = problem.prepared
     if coarse.max_degree > _RANGE_DEGREE:
-        love = love_numbers(recipe.earth.model, max_degree=_RANGE_DEGREE)
-        coarse = prepare_solver(problem.ocean, love, max_degree=_RANGE_DEGREE, rotation=recipe.earth.rotation)
+        coarse = _prepared(recipe, problem.ocean, _RANGE_DEGREE)
     return out.merge(range_within(coarse, solved.load, sites), compat="equals", combine_attrs="override")

@@ -61,7 +61,8 @@ def pictures(study: Study, tables: dict[str, pd.DataFrame]) -> Iterator[Picture]
 
 def _small_print(study: Study, what: str) -> str:
     recipe = study.recipe
-    solved = f"{recipe.earth.model.upper()}, degree {recipe.grid.max_degree}, rotation {'on' if recipe.earth.rotation else 'off'}"
+    earth = recipe.earth.model.upper() if recipe.earth.file is None else recipe.earth.file.name
+    solved = f"{earth}, degree {recipe.grid.max_degree}, rotation {'on' if recipe.earth.rotation else 'off'}"
     return f"{what} Mass record: {recipe.mass.file.name}. {solved}. {LEFT_OUT} {CAUTION}"
 
 

@@ -8,15 +8,16 @@ from pathlib import Path
 from typing import Any
 
 from massfingerprint.arguments import real_number, whole_number
+from massfingerprint.earth.choice import ChosenEarth
 from massfingerprint.earth.frames import FRAMES
-from massfingerprint.earth.love import MODELS as EARTHS
+from massfingerprint.earth.models import MODELS as EARTHS
 from massfingerprint.errors import InputError, MassFingerprintError, StudyError, nearest_names
 from massfingerprint.files.toml import TomlFile, read_toml
 from massfingerprint.mass.covariance import COMPONENTS
 from massfingerprint.mass.intervals import INTERVALS
 from massfingerprint.mass.ledger import QUANTITIES
 from massfingerprint.mass.rates import check_windows
-from massfingerprint.sealevel.fingerprints import LEVELS
+from massfingerprint.sealevel.fingerprints import FIELDS
 from massfingerprint.sphere.grids import regular_grid
 
 FIGURE_FORMATS = ("png", "pdf", "svg")
@@ -47,10 +48,19 @@ class RegionChoice:
 
 @dataclass(frozen=True, kw_only=True)
 class EarthChoice:
-    """The Earth and whether its rotation takes part."""
+    """The Earth, built in or from a file, whether its rotation takes part, and how heavy the water is that moves."""
 
     model: str = "prem"
+    file: Path | None = None
+    period: float | None = None
+    love_frame: str | None = None
     rotation: bool = True
+    redistributed_density: float | None = None
+
+    @property
+    def chosen(self) -> ChosenEarth:
+        """What gives its Love numbers."""
+        return ChosenEarth(self.model if self.file is None else str(self.file), self.period, self.love_frame)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -154,6 +164,15 @@ def _switch(value: Any, base: Path) -> bool:
     return value
 
 
+def _number(unit: str) -> Check:
+    def check(value: Any, base: Path) -> float:
+        del base
+        tiny = 1e-300
+        return real_number(value, argument="value", allowed=f"a positive number of {unit}", low=tiny)
+
+    return check
+
+
 def _word(known: tuple[str, ...], kind: str) -> Check:
     def check(value: Any, base: Path) -> str:
         del base
@@ -221,7 +240,17 @@ _TABLES: dict[str, tuple[type, dict[str, Check]]] = {
         RegionChoice,
         {"builtin": _list_of(_text), "outlines": _list_of(_file), "name_field": _text},
     ),
-    "earth": (EarthChoice, {"model": _word(tuple(EARTHS), "Earth"), "rotation": _switch}),
+    "earth": (
+        EarthChoice,
+        {
+            "model": _word(tuple(EARTHS), "Earth"),
+            "file": _file,
+            "period": _number("seconds"),
+            "love_frame": _word(FRAMES, "reference frame"),
+            "rotation": _switch,
+            "redistributed_density": _number("kg m-3"),
+        },
+    ),
     "grid": (GridChoice, {"spacing": _spacing, "max_degree": _degree}),
     "sites": (SiteChoice, {"file": _file}),
     "rates": (RateChoice, {"seasonal": _switch}),
@@ -230,7 +259,7 @@ _TABLES: dict[str, tuple[type, dict[str, Check]]] = {
         {
             "folder": _path,
             "maps": _switch,
-            "fields": _list_of(_word(LEVELS, "field"), least=1),
+            "fields": _list_of(_word(FIELDS, "field"), least=1),
             "interval": _word(INTERVALS, "interval"),
             "figure_formats": _list_of(_word(FIGURE_FORMATS, "format of figures"), least=1),
             "reference_frame": _word(FRAMES, "reference frame"),

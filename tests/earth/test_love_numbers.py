@@ -194,7 +194,7 @@ def test_layout(love):
 @pytest.mark.parametrize(
     ("arguments", "message"),
     [
-        ({"model": "pram"}, "model: no Earth named 'pram'. Did you mean prem"),
+        ({"model": "pram"}, "earth: no Earth named 'pram'. Did you mean prem"),
         ({"max_degree": 0}, "max_degree: must be a whole number of 1 or more, got 0"),
         ({"max_degree": 2.5}, "max_degree: must be a whole number of 1 or more, got 2.5"),
         ({"max_degree": True}, "got True"),
