@@ -8,8 +8,13 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from massfingerprint.earth.frames import in_frame
-    from massfingerprint.earth.love import love_numbers
+    from massfingerprint.earth.love import compute_love_numbers, extend_love_numbers, love_numbers
+    from massfingerprint.earth.models import earth_model
+    from massfingerprint.earth.own_love import read_love_numbers
+    from massfingerprint.earth.rotation import RotationConstants
+    from massfingerprint.earth.table import read_earth_model
     from massfingerprint.files.netcdf import write_netcdf
+    from massfingerprint.load.latitudes import geocentric_latitude
     from massfingerprint.load.modes import load_modes
     from massfingerprint.load.ocean import ocean_fraction
     from massfingerprint.load.regions import disc, read_regions, region_names, regions
@@ -24,6 +29,8 @@ if TYPE_CHECKING:
     from massfingerprint.mass.rates import rates
     from massfingerprint.mass.scope import check_scope
     from massfingerprint.options import set_options
+    from massfingerprint.sealevel.choices import choice_table
+    from massfingerprint.sealevel.coasts import coast_values
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
     from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
     from massfingerprint.sealevel.nearfield import add_near_field, near_field
@@ -31,6 +38,7 @@ if TYPE_CHECKING:
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
     from massfingerprint.sealevel.streamed import write_fingerprints
+    from massfingerprint.sealevel.whole_earth import earth_numbers
     from massfingerprint.sealevel.within import range_within
     from massfingerprint.sphere.points import read_sites
     from massfingerprint.study.run import run_study
@@ -44,8 +52,15 @@ _HOMES = {
     "at_sites": "sealevel.sites",
     "barystatic": "mass.barystatic",
     "check_scope": "mass.scope",
+    "choice_table": "sealevel.choices",
+    "coast_values": "sealevel.coasts",
+    "compute_love_numbers": "earth.love",
     "covariance": "mass.covariance",
     "disc": "load.regions",
+    "earth_model": "earth.models",
+    "earth_numbers": "sealevel.whole_earth",
+    "extend_love_numbers": "earth.love",
+    "geocentric_latitude": "load.latitudes",
     "in_frame": "earth.frames",
     "load_modes": "load.modes",
     "love_numbers": "earth.love",
@@ -57,14 +72,16 @@ _HOMES = {
     "range_within": "sealevel.within",
     "rates": "mass.rates",
     "read_correlation": "mass.correlation",
-    "with_correlation": "mass.correlation",
+    "read_earth_model": "earth.table",
     "read_ledger": "mass.ledger",
+    "read_love_numbers": "earth.own_love",
     "read_regions": "load.regions",
     "read_sites": "sphere.points",
     "rebase": "mass.combine",
     "region_names": "load.regions",
     "regions": "load.regions",
     "retain_on_land": "load.retained",
+    "RotationConstants": "earth.rotation",
     "run_study": "study.run",
     "sea_level_rates": "sealevel.series",
     "sea_level_series": "sealevel.series",
@@ -73,19 +90,28 @@ _HOMES = {
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
     "sum_sources": "mass.combine",
+    "with_correlation": "mass.correlation",
     "write_fingerprints": "sealevel.streamed",
     "write_netcdf": "files.netcdf",
 }
 
 __all__ = [
+    "RotationConstants",
     "add_near_field",
     "align",
     "apply_kernels",
     "at_sites",
     "barystatic",
     "check_scope",
+    "choice_table",
+    "coast_values",
+    "compute_love_numbers",
     "covariance",
     "disc",
+    "earth_model",
+    "earth_numbers",
+    "extend_love_numbers",
+    "geocentric_latitude",
     "in_frame",
     "load_modes",
     "love_numbers",
@@ -97,7 +123,9 @@ __all__ = [
     "range_within",
     "rates",
     "read_correlation",
+    "read_earth_model",
     "read_ledger",
+    "read_love_numbers",
     "read_regions",
     "read_sites",
     "rebase",

@@ -164,11 +164,11 @@ def _switch(value: Any, base: Path) -> bool:
     return value
 
 
-def _number(unit: str) -> Check:
+def _number(name: str, unit: str) -> Check:
     def check(value: Any, base: Path) -> float:
         del base
-        tiny = 1e-300
-        return real_number(value, argument="value", allowed=f"a positive number of {unit}", low=tiny)
+        smallest = 1e-300  # above 0
+        return real_number(value, argument=name, allowed=f"a positive number of {unit}", low=smallest)
 
     return check
 
@@ -245,10 +245,10 @@ _TABLES: dict[str, tuple[type, dict[str, Check]]] = {
         {
             "model": _word(tuple(EARTHS), "Earth"),
             "file": _file,
-            "period": _number("seconds"),
+            "period": _number("period", "seconds"),
             "love_frame": _word(FRAMES, "reference frame"),
             "rotation": _switch,
-            "redistributed_density": _number("kg m-3"),
+            "redistributed_density": _number("redistributed_density", "kg m-3"),
         },
     ),
     "grid": (GridChoice, {"spacing": _spacing, "max_degree": _degree}),
