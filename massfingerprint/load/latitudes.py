@@ -20,7 +20,18 @@ Array = NDArray[np.float64]
 
 
 def geocentric_latitude(latitude: Array) -> Array:
-    """Geocentric latitude, degrees, of geodetic ones on the ellipsoid: tan(geocentric) = (1 - f)^2 tan(geodetic)."""
+    """Geocentric latitudes of geodetic ones on the ellipsoid of WGS84.
+
+    Parameters
+    ----------
+    latitude : array
+        Degrees.
+
+    Returns
+    -------
+    array
+        Degrees, same shape: tan(geocentric) = (1 - f)^2 tan(geodetic).
+    """
     phi = np.deg2rad(np.asarray(latitude, dtype=np.float64))
     squeezed = (1.0 - ELLIPSOID_FLATTENING.value) ** 2
     return np.rad2deg(np.arctan2(squeezed * np.sin(phi), np.cos(phi)))

@@ -6,26 +6,34 @@ Units: radius, mean density and surface gravity 1, so 4 pi G = 3. Only the coeff
 Source: Dahlen 1974, Geophys. J. 36:363 for the fluid; Alterman, Jarosch & Pekeris 1959 for the solid (from memory).
 """
 
+from functools import partial
+
 import numpy as np
 from scipy.integrate import solve_ivp
 
 from massfingerprint.earth.prem import prem
 
-MODEL = prem()
-PRESSURE = MODEL.mean_density * MODEL.surface_gravity * MODEL.radius
 
+class Scaled:
+    """A model in these units: per shell density, enclosed mass over 4 pi, speed polynomials, eta, factors on the moduli."""
 
-def _scaled(layer):
-    """Polynomials of one shell in these units: density, enclosed mass over 4 pi, and the squared-speed polynomials."""
-    shell = MODEL.layers[layer]
-    density = [c / MODEL.mean_density for c in shell.density]
-    inner = shell.inner / MODEL.radius
-    below = float(MODEL.enclosed_mass(layer, np.array(shell.inner))) / MODEL.mass / 3.0
-    below -= sum(c * inner ** (i + 3) / (i + 3) for i, c in enumerate(density))
-    speeds = {
-        k: [c * (MODEL.mean_density / PRESSURE) ** 0.5 for c in v] for k, v in shell.elastic.items() if k != "eta"
-    }
-    return density, below, speeds, shell.elastic.get("eta")
+    def __init__(self, model):
+        self.model = model
+        self.shells = [self._shell(layer) for layer in range(len(model.layers))]
+
+    def _shell(self, layer):
+        model, shell = self.model, self.model.layers[layer]
+        # polynomials count radii in the model's unit radius
+        stretch = model.radius / (model.unit_radius or model.radius)
+        pressure = model.mean_density * model.surface_gravity * model.radius
+        density = [c * stretch**i / model.mean_density for i, c in enumerate(shell.density)]
+        inner = shell.inner / model.radius
+        below = float(model.enclosed_mass(layer, np.array(shell.inner))) / model.mass / 3.0
+        below -= sum(c * inner ** (i + 3) / (i + 3) for i, c in enumerate(density))
+        unit = (model.mean_density / pressure) ** 0.5
+        speeds = {k: [c * stretch**i * unit for i, c in enumerate(v)] for k, v in shell.elastic.items() if k != "eta"}
+        eta = shell.elastic.get("eta")
+        return density, below, speeds, eta and [c * stretch**i for i, c in enumerate(eta)], shell.factors
 
 
 def _value(coefficients, r):
@@ -35,25 +43,27 @@ def _value(coefficients, r):
     return total
 
 
-LAYERS = [_scaled(layer) for layer in range(len(MODEL.layers))]
+PREM = Scaled(prem())
 
 
-def material(layer, r):
+def material(earth, layer, r):
     """Density, gravity and Lame parameters at one radius, in plain floats for speed."""
-    density, below, speeds, eta = LAYERS[layer]
+    density, below, speeds, eta, (on_bulk, on_shear) = earth.shells[layer]
     rho = _value(density, r)
     g = 3.0 * (below + sum(c * r ** (i + 3) / (i + 3) for i, c in enumerate(density))) / r**2
     square = {name: rho * _value(c, r) ** 2 for name, c in speeds.items()}
     if eta is None:
-        return rho, g, square["p"] - 2 * square["s"], square["s"]
+        bulk, mu = on_bulk * (square["p"] - 4 * square["s"] / 3), on_shear * square["s"]
+        return rho, g, bulk - 2 * mu / 3, mu
     a, c, el, n = square["ph"], square["pv"], square["sv"], square["sh"]
     f = _value(eta, r) * (a - 2 * el)
     mu = (a + c - 2 * f + 5 * n + 6 * el) / 15
-    return rho, g, (4 * a + c + 4 * f - 4 * n) / 9 - 2 * mu / 3, mu
+    bulk, mu = on_bulk * (4 * a + c + 4 * f - 4 * n) / 9, on_shear * mu
+    return rho, g, bulk - 2 * mu / 3, mu
 
 
-def solid_system(layer, n, r):
-    rho, g, lam, mu = material(layer, r)
+def solid_system(earth, layer, n, r):
+    rho, g, lam, mu = material(earth, layer, r)
     beta, big, inv = lam + 2 * mu, n * (n + 1), 1 / r
     stiff, weight = 4 * mu * (3 * lam + 2 * mu) / beta * inv**2, rho * g * inv
     return np.array(
@@ -75,16 +85,16 @@ def solid_system(layer, n, r):
     )
 
 
-def fluid_system(layer, n, r):
-    _, g, _, _ = material(layer, r)
-    slope = np.polynomial.polynomial.polyder(np.array(MODEL.layers[layer].density))
-    gradient = float(np.polynomial.polynomial.polyval(r, slope)) / MODEL.mean_density
+def fluid_system(earth, layer, n, r):
+    _, g, _, _ = material(earth, layer, r)
+    slope = np.polynomial.polynomial.polyder(np.array(earth.shells[layer][0]))
+    gradient = float(np.polynomial.polynomial.polyval(r, slope))
     return np.array([[0.0, 1.0], [n * (n + 1) / r**2 + 3 * gradient / g, -2 / r]])
 
 
-def carry(system, layer, n, columns, start, stop):
+def carry(system, n, columns, start, stop):
     def slope(r, y):
-        return (system(layer, n, r) @ y.reshape(columns.shape)).ravel()
+        return (system(n, r) @ y.reshape(columns.shape)).ravel()
 
     size = np.array([1.0, n] if len(columns) == 2 else [1.0, 1.0 / n, n, n, 1.0, n])[:, None]
     columns = columns / np.abs(columns / size).max(axis=0)
@@ -94,9 +104,9 @@ def carry(system, layer, n, columns, start, stop):
     return done.y[:, -1].reshape(columns.shape)
 
 
-def solid_start(n, layer, r):
+def solid_start(earth, n, layer, r):
     """Three columns close to regular; what is wrong with them decays below 1e-13 before the surface."""
-    _, _, lam, mu = material(layer, r)
+    _, _, lam, mu = material(earth, layer, r)
     columns = np.zeros((6, 3))
     columns[:4, 0] = n, 1.0, 2 * mu * n * (n - 1) / r, 2 * mu * (n - 1) / r
     columns[:4, 1] = 0.0, 1.0, -lam * n * (n + 1) / r, mu * n / r
@@ -104,16 +114,16 @@ def solid_start(n, layer, r):
     return columns
 
 
-def into_fluid(n, columns, layer, r):
-    rho, g, _, _ = material(layer, r)
+def into_fluid(earth, columns, layer, r):
+    rho, g, _, _ = material(earth, layer, r)
     rows = np.array([columns[3], columns[2] - rho * (g * columns[0] - columns[4])])
     mix = np.linalg.svd(rows)[2][-1]
     y = columns @ mix
     return np.array([[y[4]], [y[5] + 3 * rho * y[0]]])
 
 
-def out_of_fluid(columns, layer, r):
-    rho, g, _, _ = material(layer, r)
+def out_of_fluid(earth, columns, layer, r):
+    rho, g, _, _ = material(earth, layer, r)
     f, slope = columns[:, 0]
     out = np.zeros((6, 3))
     out[:, 0] = 0, 0, -rho * f, 0, f, slope
@@ -122,25 +132,29 @@ def out_of_fluid(columns, layer, r):
     return out
 
 
-def surface_columns(n):
+def surface_columns(earth, n):
     start = max(1e-4, float(np.exp(-20.0 / n)))
-    columns = None
-    for layer, shell in enumerate(MODEL.layers):
-        top, bottom = shell.outer / MODEL.radius, shell.inner / MODEL.radius
+    columns, shells = None, earth.model.layers
+    for layer, shell in enumerate(shells):
+        top, bottom = shell.outer / earth.model.radius, shell.inner / earth.model.radius
         if top <= start:
             continue
         begin = max(bottom, start)
         if columns is None:
-            columns = np.array([[1.0], [n / begin]]) if shell.fluid else solid_start(n, layer, begin)
-        elif shell.fluid != MODEL.layers[layer - 1].fluid:
-            columns = into_fluid(n, columns, layer, begin) if shell.fluid else out_of_fluid(columns, layer - 1, begin)
-        columns = carry(fluid_system if shell.fluid else solid_system, layer, n, columns, begin, top)
+            columns = np.array([[1.0], [n / begin]]) if shell.fluid else solid_start(earth, n, layer, begin)
+        elif shell.fluid != shells[layer - 1].fluid:
+            into = shell.fluid
+            columns = (
+                into_fluid(earth, columns, layer, begin) if into else out_of_fluid(earth, columns, layer - 1, begin)
+            )
+        system = fluid_system if shell.fluid else solid_system
+        columns = carry(partial(system, earth, layer), n, columns, begin, top)
     return columns
 
 
-def load_and_tide(n):
-    """h', l', k', h, l, k of one degree of PREM; degree 1 in CE (tide meaningless there)."""
-    columns = surface_columns(n)
+def load_and_tide(n, earth=PREM):
+    """h', l', k', h, l, k of one degree, of PREM by default; degree 1 in CE (tide meaningless there)."""
+    columns = surface_columns(earth, n)
     conditions = np.array([columns[2], columns[3], columns[5] + (n + 1) * columns[4]])
     load, tide = [-(2 * n + 1) / 3, 0.0, 2 * n + 1.0], [0.0, 0.0, 2 * n + 1.0]
     if n == 1:

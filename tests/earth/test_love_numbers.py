@@ -9,9 +9,10 @@ from massfingerprint.earth import _radial
 from massfingerprint.earth._radial import surface_numbers
 from massfingerprint.earth.layers import homogeneous
 from massfingerprint.earth.love import compute_love_numbers, love_numbers
+from massfingerprint.earth.models import MODELS
 from massfingerprint.earth.prem import prem
 from massfingerprint.errors import InputError
-from tests.earth.second_method import load_and_tide
+from tests.earth.second_method import Scaled, load_and_tide
 
 NAMES = ("h_load", "l_load", "k_load", "h_tide", "l_tide", "k_tide")
 TWENTY = (1, 2, 3, 4, 5, 6, 8, 10, 14, 20, 30, 45, 70, 110, 170, 260, 400, 700, 1200, 2000)
@@ -41,6 +42,18 @@ def test_second_method_agrees(degree, love):
             assert a == 0.0
             continue
         assert a == pytest.approx(b, rel=1e-8, abs=1e-12), name
+
+
+@pytest.mark.parametrize(
+    "name", ["prem_200s", "prem_oceanic", "prem_continental", "prem_no_crust", "prem_as_published"]
+)
+def test_second_method_agrees_on_every_realistic_earth(name):
+    """As above for three degrees that see the core, the mantle, the crust. Uniform and layered spheres have closed forms."""
+    ours, other = love_numbers(name, max_degree=400), Scaled(MODELS[name].make())
+    for degree in (2, 20, 400):
+        second = load_and_tide(degree, other)
+        for number, b in zip(NAMES, second, strict=True):
+            assert float(ours[number][degree]) == pytest.approx(b, rel=1e-8, abs=1e-12), (number, degree)
 
 
 def test_self_convergence(recomputed):
