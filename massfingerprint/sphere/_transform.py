@@ -186,6 +186,22 @@ def gradient_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Arr
     return values.reshape((*lead, 2, count))
 
 
+def synthesise_on(coefficients: Complex, colatitude: Array, count: int) -> Array:
+    """Field (nring, count) of coefficients (n,) on rings of ``count`` even cells at any co-latitudes (radians), from azimuth 0."""
+    rings = colatitude.size
+    values = ducc0.sht.synthesis(
+        alm=np.ascontiguousarray(coefficients, dtype=np.complex128)[None],
+        theta=np.ascontiguousarray(colatitude, dtype=np.float64),
+        phi0=np.zeros(rings),
+        nphi=np.full(rings, count, dtype=np.uint64),
+        ringstart=np.arange(rings, dtype=np.uint64) * count,
+        spin=0,
+        lmax=degree_of_count(coefficients.size),
+        nthreads=options.threads(),
+    )
+    return values.reshape((rings, count))
+
+
 def synthesise_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Array:
     """Values (..., npoint) at points (radians): each point is a ring of one cell, so Legendre functions are exact."""
     lead = coefficients.shape[:-1]

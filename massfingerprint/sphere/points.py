@@ -115,6 +115,14 @@ def _unit_vectors(lat: Array, lon: Array) -> Array:
     return np.stack([np.cos(phi) * np.cos(lam), np.cos(phi) * np.sin(lam), np.sin(phi)], axis=-1)
 
 
+def distance_between(places: tuple[Array, Array], others: tuple[Array, Array]) -> Array:
+    """Great-circle distance (n,) in km from places (latitudes, longitudes in degrees) to the nearest of the others."""
+    from scipy.spatial import cKDTree  # noqa: PLC0415  half a second, only when places are searched
+
+    chord, _ = cKDTree(_unit_vectors(*others)).query(_unit_vectors(*places))
+    return np.asarray(2.0 * np.arcsin(np.clip(chord / 2.0, 0.0, 1.0)) * SPHERE_RADIUS.value / 1e3, dtype=np.float64)
+
+
 def distance_to_cells(mask: NDArray, grid: Grid, sites: pd.DataFrame) -> Array:
     """Great-circle distance (nsite,) in km from sites to the nearest marked cell of a mask (nlat, nlon).
 

@@ -1,0 +1,1 @@
+"""What a place or an instrument sees."""
