@@ -11,11 +11,13 @@ from massfingerprint import __version__
 from massfingerprint.errors import MassFingerprintError
 
 _COMMANDS = {
+    "altimetry": "What a satellite, a mask, gauges or the open ocean see of the true mean rise.",
     "choices": "How far coasts move with the Earth, rotation, water, latitude, coastline: a table.",
     "explain": "Where a number of a study comes from: inputs, formula, factor, citation, checksum.",
     "earth": "Earths: list, compute their Love numbers, compare, export, plot.",
     "kernel": "What a gigatonne lost anywhere does at a coast: ranked, with range, map.",
     "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
+    "motions": "Geocentre, J2, pole, length of day of a mass change, beside the observed pole.",
     "sites": "Sea level at named coasts from published mass rates.",
     "study": "A whole study: one file in, a folder of answers out.",
 }

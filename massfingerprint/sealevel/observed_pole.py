@@ -1,6 +1,6 @@
 """The pole as it was observed, its drift over a window, and the same record without its yearly and Chandler cycles.
 
-Everything that moves mass moves it: mantle and crust still rising after the ice age, mantle convection, core, oceans, air, water on land,
+Everything that moves mass moves it: the Earth still rising after the ice age, mantle convection, core, oceans, air, water on land,
 earthquakes, and the ice. So the observed drift stands beside a computed one, and is no measure of its error.
 """
 
@@ -70,8 +70,8 @@ def record_span() -> tuple[np.datetime64, np.datetime64]:
 def smoothed_pole() -> xr.Dataset:
     """Observed polar motion without its cycles, for drawing.
 
-    Each value is a weighted mean over 6.4 years: a mean over a year of means over a Chandler period of means over the rest. A plain mean
-    over 6.4 years would leave a twentieth of both cycles, since neither fits into it a whole number of times.
+    Each value is a weighted mean over 6.4 years: a mean over a year of means over a Chandler period of means over the rest. A
+    plain mean over 6.4 years would leave a twentieth of both cycles, since neither fits into it a whole number of times.
 
     Returns
     -------
@@ -113,9 +113,9 @@ def observed_drift(window: tuple[Any, Any]) -> xr.Dataset:
     Returns
     -------
     Dataset
-        ``x_rate``, ``y_rate`` in mas yr-1 (y towards 90 W); ``x_rate_formal_sigma`` as if the residuals were white, which they are not;
-        ``x_rate_sigma`` the same widened by sqrt((1 + r)/(1 - r)), r the correlation of residuals a tenth of a year apart (x and y
-        alike), still no full account of slow residuals; ``x_start``, ``y_start`` in mas, the line at the start of the window;
+        ``x_rate``, ``y_rate`` in mas yr-1 (y towards 90 W), each with ``..._formal_sigma``, as if the residuals were white, which
+        they are not, and ``..._sigma``, the formal one widened by sqrt((1 + r)/(1 - r)) with r the correlation of residuals a tenth
+        of a year apart, still no full account of slow ones; ``x_start``, ``y_start`` in mas, the line at the start of the window;
         ``x_residual``, ``y_residual`` in mas, root mean square. Attributes ``start``, ``end``, ``source``.
 
     Raises

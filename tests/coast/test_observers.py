@@ -140,7 +140,7 @@ def test_the_open_ocean_keeps_its_distance(problem):
 
 
 def test_a_satellite_sees_too_little_of_greenlands_ice(problem):
-    """The sea floor sinks under the water: 8 % of the ice's rise from 1993 to 2014 (Frederikse et al. 2017, from memory, all ice)."""
+    """The sea floor sinks under the water: 8 % of all ice's rise, 1993 to 2014 (Frederikse et al. 2017, from memory)."""
     seen = observed_means(*problem, {"altimeter": View(south=-66.0, north=66.0), **ALL})
     floor = seen["ocean_floor"].sel(view=["ocean"]).values
     assert floor[0, 0] == pytest.approx(-0.08, abs=0.03)

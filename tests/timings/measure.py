@@ -226,7 +226,9 @@ def love(repeats):
         rows.append((f"Love numbers to 4096: {name}", f"{taken:.2f} s", ""))
     plain = seconds(lambda: mf.love_numbers(max_degree=2048, recompute=True), 1)
     quick = seconds(lambda: mf.compute_love_numbers(MODELS["prem"].make(), 2048), repeats)
-    rows.append(("Love numbers to 2048: every degree", f"{plain:.2f} s", f"{plain / quick:.1f} x the interpolated ones"))
+    rows.append(
+        ("Love numbers to 2048: every degree", f"{plain:.2f} s", f"{plain / quick:.1f} x the interpolated ones")
+    )
     far = seconds(lambda: mf.compute_love_numbers(MODELS["prem"].make(), 40000), repeats)
     rows.append(("Love numbers to 40000", f"{far:.2f} s", ""))
     read = seconds(lambda: mf.love_numbers(max_degree=2048), repeats)
