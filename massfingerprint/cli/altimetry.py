@@ -109,8 +109,8 @@ def _printed(totals: pd.DataFrame, sources: pd.DataFrame, mean: float, sigma: fl
 def _notes(frame: str, problem: Problem) -> str:
     text = (
         f"mm/yr. seen from above: mean geocentric sea level in {frame} over the view, as an altimeter measures it; ratio: over "
-        "the true mean = 1 + sampling + ocean floor. ocean floor: the sea floor sinks under the water that was added, which a "
-        "satellite takes for less rise; no observer from above can see it. sampling: the view does not see the whole ocean. seen by "
+        "the true mean = 1 + sampling + ocean floor. ocean floor: the sea floor sinks under the water that was added, which "
+        "a satellite takes for less rise. sampling: the view does not see the whole ocean. seen by "
         "gauges: mean relative sea level over the view. +-: 1 sigma of the mass rates. "
         f"Earth {problem.earth}, degree {problem.max_degree}. {LEFT_OUT} {CAUTION}"
     )
