@@ -18,6 +18,7 @@ from massfingerprint.earth.layers import EarthModel
 Array = NDArray[np.float64]
 EVERY_DEGREE_TO = 64
 INTEGRATED_TO = 4096
+_TOGETHER = 2.0  # ratio of degrees that are integrated together: fewer, wider steps of the machine
 _POINTS = 16  # of an octave: with 12 the error is that of the integration already
 _POWERS = np.array([0, 1, 1, 1, 2, 2])[:, None]  # h', l', k', h, l, k times n to these powers stay of one size
 _LAW_HOLDS = 5e-3  # of h' over the last octave; its error at twice the degree is then below 1e-5
@@ -39,7 +40,7 @@ def numbers_by_degree(
     refinement : float
         Factor on the number of steps.
     """
-    start = surface_numbers(model, min(max_degree, EVERY_DEGREE_TO), refinement=refinement)
+    start = surface_numbers(model, min(max_degree, EVERY_DEGREE_TO), refinement=refinement, window=_TOGETHER)
     table = np.zeros((6, max_degree + 1))
     *rows, defect = astuple(start)
     table[:, : len(rows[0])] = rows
@@ -63,7 +64,7 @@ def _octave(model: EarthModel, first: int, last: int, refinement: float) -> Arra
     degree = np.arange(first + 1.0, last + 1.0)
     if degree.size <= _POINTS:
         return numbers_at(model, degree, refinement=refinement)
-    scaled = numbers_at(model, at, refinement=refinement) * at**_POWERS
+    scaled = numbers_at(model, at, refinement=refinement, window=_TOGETHER) * at**_POWERS
     series = np.linalg.solve(chebyshev.chebvander(nodes, _POINTS - 1), scaled.T)
     where = (2.0 * np.log(degree) - low - high) / (high - low)
     return np.asarray(chebyshev.chebval(where, series) / degree**_POWERS, dtype=np.float64)

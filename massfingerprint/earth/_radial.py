@@ -178,11 +178,11 @@ def _fluid_to_solid(n: Array, columns: Array, material: tuple[Array, ...]) -> Ar
     return out
 
 
-def _batches(degrees: Array) -> Iterator[NDArray[np.int64]]:
-    """Positions of degrees that lie within one ratio of each other (``degrees`` ascending, 1 or more)."""
+def _batches(degrees: Array, window: float) -> Iterator[NDArray[np.int64]]:
+    """Positions of degrees that lie within a ratio of each other (``degrees`` ascending, 1 or more)."""
     first = 0
     while first < degrees.size:
-        last = int(np.searchsorted(degrees, max(degrees[first] * _WINDOW, degrees[first] + 1.0), side="left"))
+        last = int(np.searchsorted(degrees, max(degrees[first] * window, degrees[first] + 1.0), side="left"))
         yield np.arange(first, last, dtype=np.int64)
         first = last
 
@@ -267,7 +267,9 @@ def _degree_zero(model: EarthModel, refinement: float) -> float:
     return float(-columns[0, 0, 0] / columns[0, 1, 0] / 3.0)
 
 
-def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1.0) -> SurfaceNumbers:
+def surface_numbers(
+    model: EarthModel, max_degree: int, *, refinement: float = 1.0, window: float = _WINDOW
+) -> SurfaceNumbers:
     """Load and tide Love numbers of degrees 0 to ``max_degree``, degree 1 in CE.
 
     Parameters
@@ -278,6 +280,8 @@ def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1
         1 or more.
     refinement : float
         Factor on the number of steps, for convergence tests.
+    window : float
+        Degrees within this ratio are integrated together, with the steps that the highest of them needs.
 
     Returns
     -------
@@ -286,7 +290,7 @@ def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1
     """
     degrees = np.arange(1.0, max_degree + 1.0)
     table = np.zeros((6, max_degree + 1))
-    table[:, 1:], defect = _table(model, degrees, refinement)
+    table[:, 1:], defect = _table(model, degrees, refinement, window)
     table[3:, 1] = 0.0
     table[2, 1] = 0.0
     table[0, 0] = _degree_zero(model, refinement)
@@ -294,14 +298,14 @@ def surface_numbers(model: EarthModel, max_degree: int, *, refinement: float = 1
     return SurfaceNumbers(h_load, l_load, k_load, h_tide, l_tide, k_tide, defect)
 
 
-def numbers_at(model: EarthModel, degrees: Array, *, refinement: float = 1.0) -> Array:
+def numbers_at(model: EarthModel, degrees: Array, *, refinement: float = 1.0, window: float = _WINDOW) -> Array:
     """The six numbers (6, n), rows h' l' k' h l k, at ascending degrees (n,) above 1, whole or not."""
-    return _table(model, degrees, refinement)[0]
+    return _table(model, degrees, refinement, window)[0]
 
 
-def _table(model: EarthModel, degrees: Array, refinement: float) -> tuple[Array, float]:
+def _table(model: EarthModel, degrees: Array, refinement: float, window: float) -> tuple[Array, float]:
     out, defect = np.empty((6, degrees.size)), 0.0
-    for batch in _batches(degrees):
+    for batch in _batches(degrees, window):
         n = degrees[batch]
         load, tide, wrong = _surface(n, _integrate(model, n, refinement))
         defect = max(defect, wrong)

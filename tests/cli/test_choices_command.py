@@ -7,11 +7,24 @@ import json
 import pytest
 
 from massfingerprint.cli import main
+from massfingerprint.sealevel import choices
+from massfingerprint.sealevel.choices import other_choices
 
 SITES = "site,lat,lon\nnorthern harbour,59,-8\nsouthern harbour,-34,151\n"
 RATES = """time_start,time_end,source,mass_rate [Gt yr-1],mass_rate_sigma [Gt yr-1],citation
 2000-01-01,2010-01-01,greenland_southeast,-80,5,made up
 """
+
+
+@pytest.fixture(autouse=True)
+def few(monkeypatch):
+    """One choice of each kind: all of them are solved in the tests of the table."""
+    kept = ("prem_continental", "none", "geocentric", "ice front")
+
+    def some(usual):
+        return {key: physics for key, physics in other_choices(usual).items() if key[1] in kept}
+
+    monkeypatch.setattr(choices, "other_choices", some)
 
 
 @pytest.fixture
