@@ -7,6 +7,9 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from massfingerprint.coast.observers import View, observed_means
+    from massfingerprint.coast.station_rates import station_rates, station_series
+    from massfingerprint.coast.stations import read_station_series, read_stations
     from massfingerprint.earth.frames import in_frame
     from massfingerprint.earth.love import compute_love_numbers, extend_love_numbers, love_numbers
     from massfingerprint.earth.models import earth_model
@@ -34,6 +37,7 @@ if TYPE_CHECKING:
     from massfingerprint.sealevel.fingerprints import solve_fingerprints
     from massfingerprint.sealevel.kernels import apply_kernels, site_kernels
     from massfingerprint.sealevel.nearfield import add_near_field, near_field
+    from massfingerprint.sealevel.observed_pole import observed_drift
     from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
     from massfingerprint.sealevel.sites import at_sites
     from massfingerprint.sealevel.solver import prepare_solver
@@ -65,6 +69,8 @@ _HOMES = {
     "load_modes": "load.modes",
     "love_numbers": "earth.love",
     "near_field": "sealevel.nearfield",
+    "observed_drift": "sealevel.observed_pole",
+    "observed_means": "coast.observers",
     "ocean_fraction": "load.ocean",
     "prepare_solver": "sealevel.solver",
     "published_rates": "mass.published",
@@ -77,6 +83,8 @@ _HOMES = {
     "read_love_numbers": "earth.own_love",
     "read_regions": "load.regions",
     "read_sites": "sphere.points",
+    "read_station_series": "coast.stations",
+    "read_stations": "coast.stations",
     "rebase": "mass.combine",
     "region_names": "load.regions",
     "regions": "load.regions",
@@ -89,7 +97,10 @@ _HOMES = {
     "site_kernels": "sealevel.kernels",
     "solve_fingerprints": "sealevel.fingerprints",
     "spread_mass": "load.spread",
+    "station_rates": "coast.station_rates",
+    "station_series": "coast.station_rates",
     "sum_sources": "mass.combine",
+    "View": "coast.observers",
     "with_correlation": "mass.correlation",
     "write_fingerprints": "sealevel.streamed",
     "write_netcdf": "files.netcdf",
@@ -97,6 +108,7 @@ _HOMES = {
 
 __all__ = [
     "RotationConstants",
+    "View",
     "add_near_field",
     "align",
     "apply_kernels",
@@ -116,6 +128,8 @@ __all__ = [
     "load_modes",
     "love_numbers",
     "near_field",
+    "observed_drift",
+    "observed_means",
     "ocean_fraction",
     "prepare_solver",
     "published_rates",
@@ -128,6 +142,8 @@ __all__ = [
     "read_love_numbers",
     "read_regions",
     "read_sites",
+    "read_station_series",
+    "read_stations",
     "rebase",
     "region_names",
     "regions",
@@ -139,6 +155,8 @@ __all__ = [
     "site_kernels",
     "solve_fingerprints",
     "spread_mass",
+    "station_rates",
+    "station_series",
     "sum_sources",
     "with_correlation",
     "write_fingerprints",

@@ -19,6 +19,7 @@ _COMMANDS = {
     "ledger": "A mass record in gigatonnes and millimetres, with rates and errors; published rates.",
     "motions": "Geocentre, J2, pole, length of day of a mass change, beside the observed pole.",
     "sites": "Sea level at named coasts from published mass rates.",
+    "stations": "Elastic motion of permanent geodetic stations over their own epochs, with covariance.",
     "study": "A whole study: one file in, a folder of answers out.",
 }
 

@@ -19,7 +19,7 @@ def fast():
 
 
 def test_all_degrees_agree_with_the_plain_way(fast, love):
-    """The shipped table is integrated at every degree. 2e-10 of the load numbers: that of l' at degree 8 is wrong by 1e-10 there."""
+    """The shipped table is integrated at every degree. 2e-10 of the load numbers: its l' at degree 8 is wrong by 1e-10."""
     for name in LOAD:
         np.testing.assert_allclose(fast[name][:2049], love[name], rtol=2e-10, atol=0, err_msg=name)
     for name in NAMES[3:]:  # tide numbers come out as small differences from 1: 1e-14 of that
