@@ -174,7 +174,7 @@ def _notes(answer: Answer) -> list[str]:
         "total over the global mean. land up: vertical land motion, elastic, present-day, mm/yr, in "
         f"{answer.patterns.attrs['reference_frame']}. truncation: what fading out degrees {degree // 2} to {degree} takes off. "
         f"Within {WITHIN:g} km of ice the value has the near field of its outline in it, all degrees; not resolved: the outline "
-        "named is too coarse there."
+        f"named is too coarse there. Earth: {answer.patterns.attrs['love_numbers']}; degree {degree}."
     )
     return [
         line for paragraph in (text, *_rounding(answer), _LEFT_OUT, _CAUTION) for line in textwrap.wrap(paragraph, 110)

@@ -36,7 +36,7 @@ from massfingerprint.mass.intervals import INTERVALS, interval_factor
 from massfingerprint.mass.ledger import read_ledger
 from massfingerprint.mass.scope import check_scope, corrections, ledger_scopes
 from massfingerprint.sealevel.coasts import coast_values
-from massfingerprint.study.metadata import CAUTION
+from massfingerprint.study.metadata import CAUTION, now
 
 _WIDTH = 110
 _OUTPUTS = tuple(f"bedrock_{name}" for name in COMPONENTS)
@@ -187,6 +187,7 @@ def _write(given: _Given, answer: _Answer, options: dict[str, Any]) -> None:
             "reference_frame": options["frame"],
             "source": _cited(given.ledger),
             "comment": f"{INTERPOLATION} {STATION_LEFT_OUT} {CAUTION}",
+            "history": f"{now()} massfingerprint stations",
         }
         write_cf_netcdf(answer.rates[list(names)], options["covariance_file"], attributes=about)
     if options["series_out"] is not None:

@@ -87,6 +87,7 @@ def test_the_numbers_are_those_of_the_package(files, values, capsys, tmp_path):
     table = list(csv.DictReader(io.StringIO(Path(out[0]).read_text(encoding="utf-8"))))
     assert float(table[1]["up [mm yr-1]"]) == data["rows"][1]["up [mm yr-1]"]
     stored = read_netcdf(out[1])
+    assert "massfingerprint stations" in stored.attrs["history"]
     assert stored["covariance"].values == pytest.approx(expected["covariance"].values, rel=1e-6)
     assert list(stored["station_other"].values) == ["FARR", "NEAR", "LATE"]
     series = pd.read_csv(out[2])
