@@ -210,7 +210,7 @@ def at_period(model: EarthModel, period: float, *, reference_period: float = 1.0
         return 1.0 if quality is None else (1.0 - turns / quality) ** 2
 
     shells = tuple(replace(shell, factors=(factor(shell.q_bulk), factor(shell.q_shear))) for shell in model.layers)
-    words = f"{model.source}, at {period:g} s by its Q"
+    words = f"{model.source.replace(', 1 s,', ',')}, at {period:g} s by its Q"
     return replace(model, name=f"{model.name}_{period:g}s", layers=shells, source=words)
 
 
