@@ -21,7 +21,7 @@ from massfingerprint.study.metadata import CAUTION
 
 _WIDTH = 110
 _SITES_A_ROW = 6
-_LETTERS = 10  # a line of a site's name over its column
+_LETTERS = 12  # a line of a site's name over its column
 
 
 def _rows(table: xr.Dataset) -> pd.DataFrame:
