@@ -7,6 +7,8 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from massfingerprint.coast.budget import budget, closure
+    from massfingerprint.coast.components import component, mass_components
     from massfingerprint.coast.observers import View, observed_means
     from massfingerprint.coast.station_rates import station_rates, station_series
     from massfingerprint.coast.stations import read_station_series, read_stations
@@ -55,9 +57,12 @@ _HOMES = {
     "apply_kernels": "sealevel.kernels",
     "at_sites": "sealevel.sites",
     "barystatic": "mass.barystatic",
+    "budget": "coast.budget",
     "check_scope": "mass.scope",
     "choice_table": "sealevel.choices",
+    "closure": "coast.budget",
     "coast_values": "sealevel.coasts",
+    "component": "coast.components",
     "compute_love_numbers": "earth.love",
     "covariance": "mass.covariance",
     "disc": "load.regions",
@@ -68,6 +73,7 @@ _HOMES = {
     "in_frame": "earth.frames",
     "load_modes": "load.modes",
     "love_numbers": "earth.love",
+    "mass_components": "coast.components",
     "near_field": "sealevel.nearfield",
     "observed_drift": "sealevel.observed_pole",
     "observed_means": "coast.observers",
@@ -114,9 +120,12 @@ __all__ = [
     "apply_kernels",
     "at_sites",
     "barystatic",
+    "budget",
     "check_scope",
     "choice_table",
+    "closure",
     "coast_values",
+    "component",
     "compute_love_numbers",
     "covariance",
     "disc",
@@ -127,6 +136,7 @@ __all__ = [
     "in_frame",
     "load_modes",
     "love_numbers",
+    "mass_components",
     "near_field",
     "observed_drift",
     "observed_means",

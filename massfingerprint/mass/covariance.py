@@ -62,7 +62,7 @@ def _elapsed(ledger: xr.Dataset) -> Array:
     return (ledger["time"].values - epoch) / np.timedelta64(1, "D")
 
 
-def _component(name: str, first: Array, second: Array, elapsed: Array) -> Array:
+def component_covariance(name: str, first: Array, second: Array, elapsed: Array) -> Array:
     """Covariance (time, time) of one component between two sigma series at the same epochs, before any correlation."""
     if name == "independent":
         return np.diag(first * second)
@@ -125,7 +125,9 @@ def cross_covariance(ledger: xr.Dataset, first: str, second: str, *, component: 
     names = COMPONENTS if component is None else (component,)
     absent = np.isnan(one["independent"])[:, None] | np.isnan(two["independent"])[None, :]
     filled = [{name: np.nan_to_num(part[name]) for name in COMPONENTS} for part in (one, two)]
-    total = sum((_component(n, filled[0][n], filled[1][n], elapsed) for n in names), start=np.zeros(absent.shape))
+    total = sum(
+        (component_covariance(n, filled[0][n], filled[1][n], elapsed) for n in names), start=np.zeros(absent.shape)
+    )
     time = ledger["time"].values
     coords: dict[str, Any] = {"time": time, "time_other": time}
     attrs = {
