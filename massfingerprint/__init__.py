@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from massfingerprint.coast.budget import budget, closure
-    from massfingerprint.coast.components import component, mass_components
+    from massfingerprint.coast.components import component, mass_components, rate_component
+    from massfingerprint.coast.land_motion import Uplift, residual_land_motion, whole_land_motion
     from massfingerprint.coast.observers import View, observed_means
     from massfingerprint.coast.station_rates import station_rates, station_series
     from massfingerprint.coast.stations import read_station_series, read_stations
@@ -82,6 +83,7 @@ _HOMES = {
     "published_rates": "mass.published",
     "published_sets": "mass.published",
     "range_within": "sealevel.within",
+    "rate_component": "coast.components",
     "rates": "mass.rates",
     "read_correlation": "mass.correlation",
     "read_earth_model": "earth.table",
@@ -94,6 +96,7 @@ _HOMES = {
     "rebase": "mass.combine",
     "region_names": "load.regions",
     "regions": "load.regions",
+    "residual_land_motion": "coast.land_motion",
     "retain_on_land": "load.retained",
     "RotationConstants": "earth.rotation",
     "run_study": "study.run",
@@ -106,7 +109,9 @@ _HOMES = {
     "station_rates": "coast.station_rates",
     "station_series": "coast.station_rates",
     "sum_sources": "mass.combine",
+    "Uplift": "coast.land_motion",
     "View": "coast.observers",
+    "whole_land_motion": "coast.land_motion",
     "with_correlation": "mass.correlation",
     "write_fingerprints": "sealevel.streamed",
     "write_netcdf": "files.netcdf",
@@ -114,6 +119,7 @@ _HOMES = {
 
 __all__ = [
     "RotationConstants",
+    "Uplift",
     "View",
     "add_near_field",
     "align",
@@ -145,6 +151,7 @@ __all__ = [
     "published_rates",
     "published_sets",
     "range_within",
+    "rate_component",
     "rates",
     "read_correlation",
     "read_earth_model",
@@ -157,6 +164,7 @@ __all__ = [
     "rebase",
     "region_names",
     "regions",
+    "residual_land_motion",
     "retain_on_land",
     "run_study",
     "sea_level_rates",
@@ -168,6 +176,7 @@ __all__ = [
     "station_rates",
     "station_series",
     "sum_sources",
+    "whole_land_motion",
     "with_correlation",
     "write_fingerprints",
     "write_netcdf",

@@ -16,6 +16,7 @@ from massfingerprint.arguments import one_of
 from massfingerprint.errors import InputError, UnitsError, nearest_names
 from massfingerprint.mass.covariance import COMPONENTS, component_covariance, cross_covariance, source_correlation
 from massfingerprint.mass.ledger import check_ledger
+from massfingerprint.mass.rates import DAYS_PER_YEAR, check_windows
 
 Array = NDArray[np.float64]
 Times = NDArray[np.datetime64]
@@ -134,6 +135,42 @@ def component(
     errors = _OwnErrors(np.nan_to_num(held), elapsed, error_model, bool(shared_between_sites))
     sites = tuple(str(name) for name in values["site"].values)
     return Component(time, sites, values.transpose("site", "time").values * scale, "own", errors)
+
+
+def rate_component(
+    rates: xr.DataArray, sigma: xr.DataArray, *, start: str, end: str, shared_between_sites: bool = False
+) -> Component:
+    """A term that changes at a constant rate, such as land motion or glacial isostatic adjustment.
+
+    Parameters
+    ----------
+    rates, sigma : DataArray (site)
+        Its part of relative sea level in mm yr-1 (of land motion minus the uplift), and 1 sigma.
+    start, end : str
+        ISO dates between which it holds.
+    shared_between_sites : bool
+        Whether all sites have one and the same error, scaled by their sigmas.
+
+    Returns
+    -------
+    Component
+        One error for all times: the sigma of its rate over any epochs is ``sigma``.
+
+    Raises
+    ------
+    InputError
+        If rates and sigmas do not go together or the dates cannot be used.
+    """
+    for part, name in ((rates, "rates"), (sigma, "sigma")):
+        if not isinstance(part, xr.DataArray) or part.dims != ("site",) or not np.isfinite(part.values).all():
+            raise InputError(f"{name}: must be a DataArray (site) of finite numbers, mm yr-1.")
+    if list(rates["site"].values) != list(sigma["site"].values) or (sigma.values < 0.0).any():
+        raise InputError("sigma: must have the sites of the rates, 0 or more.")
+    ends = np.array(check_windows({"start, end": (start, end)})["start, end"])
+    years = (ends - ends[0]) / np.timedelta64(1, "D") / DAYS_PER_YEAR
+    errors = _OwnErrors(np.outer(sigma.values, years), years, "systematic", bool(shared_between_sites))
+    sites = tuple(str(name) for name in rates["site"].values)
+    return Component(ends, sites, np.outer(rates.values, years), "own", errors)
 
 
 def mass_components(values: xr.Dataset, ledger: xr.Dataset) -> dict[str, Component]:

@@ -6,7 +6,7 @@ import pytest
 import xarray as xr
 
 from massfingerprint.coast.budget import budget, closure
-from massfingerprint.coast.components import component, mass_components
+from massfingerprint.coast.components import component, mass_components, rate_component
 from massfingerprint.errors import InputError, UnitsError
 
 SITES = ("lock", "pier")
@@ -100,6 +100,23 @@ def test_covariances_are_those_of_draws(mass):
     assert np.abs(np.cov(slopes.T) - expected).max() < 5.0 * room.max()
     assert expected[0, 1] > 3.0 * room[0, 1]  # the same ice
     assert found["residual_sigma"].values[0] == pytest.approx(np.sqrt(np.diag(expected)))
+
+
+def test_a_constant_rate_keeps_its_rate_and_its_sigma():
+    """Over any months: one error for all times."""
+    rates, sigma = (xr.DataArray(v, dims="site", coords={"site": list(SITES)}) for v in ([0.5, -1.0], [0.2, 0.3]))
+    for shared in (False, True):
+        land = rate_component(rates, sigma, start="1990-01-01", end="2030-01-01", shared_between_sites=shared)
+        found = budget(term([0.5, -1.0], 1e-9), {"land": land}, windows=WINDOW, seasonal=True)
+        assert found["rate"].values[0, :, 0] == pytest.approx([0.5, -1.0], rel=1e-9)
+        assert found["rate_sigma"].values[0, :, 0] == pytest.approx([0.2, 0.3], rel=1e-9)
+        assert found["residual_covariance"].values[0, 0, 1] == pytest.approx(0.06 if shared else 0.0, rel=1e-6)
+    with pytest.raises(InputError, match="sigma: must have the sites of the rates"):
+        rate_component(rates, -sigma, start="1990-01-01", end="2030-01-01")
+    with pytest.raises(InputError, match="must end after it starts"):
+        rate_component(rates, sigma, start="2030-01-01", end="1990-01-01")
+    with pytest.raises(InputError, match="rates: must be a DataArray"):
+        rate_component(rates.rename(site="place"), sigma, start="1990-01-01", end="2030-01-01")
 
 
 def test_sources_that_are_correlated_are_not_taken_as_independent(mass):
