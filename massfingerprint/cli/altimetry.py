@@ -12,12 +12,13 @@ import xarray as xr
 from massfingerprint.cli._mass_rates import mass_rates_options, spread
 from massfingerprint.cli._problem import Problem, problem_options
 from massfingerprint.cli._tables import as_json, rendered
-from massfingerprint.coast.observers import View, observed_means
-from massfingerprint.earth.frames import FRAMES
+from massfingerprint.coast.observers import View, check_views, observed_means
+from massfingerprint.earth.frames import FRAMES, check_frame
+from massfingerprint.earth.green import LEAST_DEGREE
 from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_text
 from massfingerprint.files.netcdf import read_netcdf
-from massfingerprint.files.tables import csv_text
+from massfingerprint.files.tables import csv_text, numbers, read_table
 from massfingerprint.load.regions import regions
 from massfingerprint.load.spread import spread_mass
 from massfingerprint.sealevel.fingerprints import solve_fingerprints
@@ -38,17 +39,27 @@ def _mask(path: Path) -> xr.DataArray:
     return found[0]
 
 
+def _gauges(path: Path) -> pd.DataFrame:
+    """Sites of a CSV file, with the column weight if it has one."""
+    sites = read_sites(path)
+    frame, _ = read_table(path, required=("site",))
+    return sites.assign(weight=numbers(frame, "weight", path=path)) if "weight" in frame else sites
+
+
 def _views(options: dict[str, Any]) -> dict[str, View]:
     """Every view asked for, the whole ocean first."""
     out = {_WHOLE: View()}
     for south, north in options["bands"] or ((-66.0, 66.0),):
-        out[f"{south:g} to {north:g}"] = View(south=south, north=north)
+        out[f"belt {south:g} to {north:g}"] = View(south=south, north=north)
     for distance in options["distances"]:
         out[f"{distance:g} km off land"] = View(away_from_land=distance)
+        for south, north in options["bands"]:
+            belt = f"belt {south:g} to {north:g}, {distance:g} km off"
+            out[belt] = View(south=south, north=north, away_from_land=distance)
     if options["mask_file"] is not None:
         out[f"mask {options['mask_file'].name}"] = View(mask=_mask(options["mask_file"]))
     if options["gauges_file"] is not None:
-        gauges = read_sites(options["gauges_file"])
+        gauges = _gauges(options["gauges_file"])
         out[f"{len(gauges)} gauges"] = View(gauges=gauges)
     return out
 
@@ -88,15 +99,20 @@ def _by_source(seen: xr.Dataset) -> pd.DataFrame:
     return out
 
 
+def _signed(value: float) -> str:
+    """Three decimals with a sign, and none of them a negative zero."""
+    return f"{round(value, 3) + 0.0:+.3f}"
+
+
 def _printed(totals: pd.DataFrame, sources: pd.DataFrame, mean: float, sigma: float) -> str:
     cells = pd.DataFrame({"view": totals["view"]})
     cells["share of the ocean"] = ["points" if np.isnan(v) else f"{v:.3f}" for v in totals["share of the ocean [1]"]]
     above = totals["seen from above [mm yr-1]"], totals["ratio to the true mean [1]"], totals["ratio sigma [1]"]
-    cells["seen from above"] = [f"{value:+.3f}" for value in above[0]]
+    cells["seen from above"] = [_signed(value) for value in above[0]]
     cells["ratio"] = [f"{value:.3f} +- {error:.3f}" for value, error in zip(*above[1:], strict=True)]
     for name in ("sampling", "ocean floor"):
-        cells[f"of it {name}"] = [f"{value:+.3f}" for value in totals[f"{name} [1]"]]
-    cells["seen by gauges"] = [f"{value:+.3f}" for value in totals["seen by gauges [mm yr-1]"]]
+        cells[f"of it {name}"] = [_signed(value) for value in totals[f"{name} [1]"]]
+    cells["seen by gauges"] = [_signed(value) for value in totals["seen by gauges [mm yr-1]"]]
     ratios = sources.copy()
     for view in ratios.columns[1:]:
         ratios[view] = [f"{value:.3f}" for value in ratios[view]]
@@ -108,10 +124,11 @@ def _printed(totals: pd.DataFrame, sources: pd.DataFrame, mean: float, sigma: fl
 
 def _notes(frame: str, problem: Problem) -> str:
     text = (
-        f"mm/yr. seen from above: mean geocentric sea level in {frame} over the view, as an altimeter measures it; ratio: over "
-        "the true mean = 1 + sampling + ocean floor. ocean floor: the sea floor sinks under the water that was added, which "
-        "a satellite takes for less rise. sampling: the view does not see the whole ocean. seen by "
-        "gauges: mean relative sea level over the view. +-: 1 sigma of the mass rates. "
+        f"mm/yr. seen from above: mean geocentric sea level in {frame} over the view, as an altimeter measures it, not relative "
+        "sea level; ratio: over the true mean = 1 + sampling + ocean floor. ocean floor: the sea floor moves, as a rule down "
+        "under the water that was added, which a satellite takes for less rise; under gauges it is their land, which rises "
+        "beside lost ice. sampling: the view does not see the whole ocean. seen by gauges: mean relative sea level over the "
+        "view; gauges within 300 km of ice have its near field. +-: 1 sigma of the mass rates. "
         f"Earth {problem.earth}, degree {problem.max_degree}. {LEFT_OUT} {CAUTION}"
     )
     return "\n".join(textwrap.wrap(text, _WIDTH))
@@ -122,11 +139,25 @@ def _notes(frame: str, problem: Problem) -> str:
 @click.option(
     "--band", "bands", nargs=2, type=float, multiple=True, help="South and north of a belt; may be repeated. [-66 66]"
 )
-@click.option("--off-land", "distances", type=float, multiple=True, help="Ocean farther from land than so many km.")
 @click.option(
-    "--mask", "mask_file", type=click.Path(path_type=Path), help="NetCDF with one variable 0 to 1 on the grid."
+    "--off-land",
+    "distances",
+    type=float,
+    multiple=True,
+    help="Ocean farther from land than so many km, also within each --band.",
 )
-@click.option("--gauges", "gauges_file", type=click.Path(path_type=Path), help="CSV with columns site, lat, lon.")
+@click.option(
+    "--mask",
+    "mask_file",
+    type=click.Path(path_type=Path),
+    help="NetCDF with one variable 0 to 1 on the cells of the grid.",
+)
+@click.option(
+    "--gauges",
+    "gauges_file",
+    type=click.Path(path_type=Path),
+    help="CSV with columns site, lat, lon; weight if they count unequally.",
+)
 @click.option("--frame", default="CM", show_default=True, help=f"Frame of the satellite: {', '.join(FRAMES)}.")
 @problem_options
 @click.option("--csv", "csv_file", type=click.Path(path_type=Path), help="Also write the table here, full numbers.")
@@ -142,16 +173,24 @@ def command(
         raise InputError(
             "rates: add to nothing, so that nothing can be compared with the true mean. Leave a source out."
         )
-    views, prepared = _views(options), problem.prepared()
-    load = spread_mass(regions(*rates["source"]), problem.ocean)
+    check_frame(frame)
+    views = _views(options)
+    check_views(views, problem.ocean)
+    near = options["gauges_file"] is not None
+    prepared = problem.prepared(least_degree=LEAST_DEGREE if near else 0)
+    outlines = regions(*rates["source"])
+    load = spread_mass(outlines, problem.ocean)
     patterns = solve_fingerprints(prepared, load, outputs=_FIELDS, reference_frame=frame)
-    seen = observed_means(prepared, problem.ocean, patterns, views)
+    beside = {"outlines": outlines, "load": load} if near else {}
+    seen = observed_means(prepared, problem.ocean, patterns, views, **beside)
     totals, sources = _totals(seen, rates), _by_source(seen)
     factor = prepared.gigatonnes_per_millimetre
     mean = -float(rates["mass_rate"].sum()) / factor
     sigma = float(spread(rates, np.ones((len(rates), 1)))[0]) / factor
     if csv_file is not None:
-        write_text(csv_text(totals), csv_file)
+        ratios = sources.set_index("source").T.add_prefix("ratio of ").add_suffix(" [1]")
+        write_text(csv_text(totals.join(ratios, on="view")), csv_file)
+        click.echo(f"Table written to {csv_file}.", err=True)
     if as_data:
         about = {"true mean [mm yr-1]": mean, "reference_frame": frame, "about": _notes(frame, problem)}
         click.echo(as_json(totals, {**about, "ratio by source": sources.set_index("source").T.to_dict()}))

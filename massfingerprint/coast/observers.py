@@ -7,29 +7,39 @@ rides on its land. Neither samples the whole ocean. With S relative sea level, U
 
 The mean over the whole ocean is the inner product with the ocean the solver uses, so that <S> is e to rounding. Over a band of
 latitude the zonal mean of a product of two band-limited fields is a polynomial in sin(latitude): Gauss-Legendre nodes in the band
-integrate it exactly, without any edge of cells. A mask is analysed as the solver analyses its ocean.
+integrate it exactly, without any edge of cells; the ocean is analysed again for it, to twice the degree of the solution as the
+solver does, because the solver keeps no more degrees than it solves. A mask is analysed as the solver analyses its ocean.
 """
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cached_property
 
 import ducc0
+import geopandas as gpd
 import numpy as np
 import pandas as pd
 import xarray as xr
 from numpy.typing import NDArray
 
 from massfingerprint.arguments import real_number
-from massfingerprint.errors import GridError, InputError
+from massfingerprint.errors import GridError, InputError, SiteError
+from massfingerprint.sealevel.nearfield import add_near_field, near_field, smoothed
+from massfingerprint.sealevel.sites import at_sites
 from massfingerprint.sealevel.solver import Prepared
 from massfingerprint.sphere import _transform
 from massfingerprint.sphere.grids import Grid, grid_of
 from massfingerprint.sphere.harmonics import check_finite
-from massfingerprint.sphere.points import check_sites, distance_between, values_at
+from massfingerprint.sphere.points import check_sites, distance_between
 
 Array = NDArray[np.float64]
 Complex = NDArray[np.complex128]
 _FIELDS = ("relative_sea_level", "sea_surface", "bedrock_up")
+_SAME_OCEAN = 1e-9  # of coefficients of order 1: the same numbers analysed twice
+_SAME_CELLS = 1e-3  # of a cell, as for grids
+_RIPPLE = (
+    2.0  # ocean in a belt as the solver sees it over that of its cells, either way; beyond, the cut series makes it up
+)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -41,11 +51,12 @@ class View:
     south, north : float
         Latitudes in degrees between which the ocean is seen.
     mask : DataArray (lat, lon), optional
-        Share of each cell that is seen, 0 to 1, on the ocean's grid.
+        Share of each cell that is seen, 0 to 1, on the ocean's cells in any order.
     away_from_land : float
         km: only cells whose centre is farther from land than this are seen.
     gauges : DataFrame, optional
-        Columns site, lat, lon: points instead of an area; the other limits must not be given then.
+        Columns site, lat, lon, and ``weight`` (0 or more) where the gauges do not count equally: points instead of an area; the
+        other limits must not be given then.
     """
 
     south: float = -90.0
@@ -60,8 +71,40 @@ class View:
         return self.mask is not None or self.away_from_land > 0.0
 
 
+def check_views(views: Mapping[str, View], ocean: xr.DataArray) -> None:
+    """Refuse views that :func:`observed_means` could not use, before anything is solved for them.
+
+    Parameters
+    ----------
+    views : mapping of name to View
+        At least one.
+    ocean : DataArray (lat, lon)
+        Ocean fraction.
+
+    Raises
+    ------
+    InputError, GridError, SiteError
+        If there is no view, or latitudes, distance, mask or gauges of one cannot be used.
+    """
+    if not isinstance(views, Mapping) or not views:
+        raise InputError("views: name at least one, such as {'whole ocean': View()}.")
+    grid = grid_of(ocean, argument="ocean")
+    for name, view in views.items():
+        if not isinstance(view, View):
+            raise InputError(
+                f"views: {name!r} must be a View, got {type(view).__name__}. Write View(south=-66, north=66)."
+            )
+        _check_view(name, view, grid)
+
+
 def observed_means(
-    prepared: Prepared, ocean: xr.DataArray, patterns: xr.Dataset, views: Mapping[str, View]
+    prepared: Prepared,
+    ocean: xr.DataArray,
+    patterns: xr.Dataset,
+    views: Mapping[str, View],
+    *,
+    outlines: gpd.GeoDataFrame | None = None,
+    load: xr.DataArray | None = None,
 ) -> xr.Dataset:
     """Mean of each field over each view, and how it compares with the true mean.
 
@@ -75,6 +118,11 @@ def observed_means(
         From ``solve_fingerprints`` with ``relative_sea_level``, ``sea_surface`` and ``bedrock_up``, load in kg m-2 Gt-1.
     views : mapping of name to View
         ``View()`` is the whole ocean.
+    outlines : GeoDataFrame, optional
+        Columns source, geometry: what the load was spread over, for gauges within 300 km of it. Without, their values lack the
+        degrees beyond the solution.
+    load : DataArray (source, lat, lon), optional
+        The load the patterns were solved for; needed with ``outlines``, which then needs Love numbers to degree 2048.
 
     Returns
     -------
@@ -82,33 +130,41 @@ def observed_means(
         ``relative_sea_level``, ``sea_surface``, ``bedrock_up``: means in mm Gt-1 per gigatonne added; ``barystatic`` () in mm Gt-1;
         ``ratio_sea_surface`` and ``ratio_relative_sea_level``: seen from above and by gauges, over the true mean;
         ``sampling`` and ``ocean_floor``: their parts, ratio_sea_surface = 1 + sampling + ocean_floor;
-        ``seen_area`` (view) in m2, NaN for gauges. The frame is that of the patterns.
+        ``seen_area`` (view) in m2, NaN for gauges; ``number_of_gauges`` (view), 0 for areas. Gauges have the values of
+        ``coast_values``: near field within 300 km of the outlines, tapered elsewhere. The frame is that of the patterns.
 
     Raises
     ------
     InputError, GridError, SiteError
-        If patterns or ocean do not fit, or a view cannot be used or sees nothing.
+        If patterns, ocean or outlines do not fit, or a view cannot be used or sees nothing.
     """
-    grid, coefficients = _checked(prepared, ocean, patterns, views)
+    if (outlines is None) != (load is None):
+        raise InputError("outlines, load: must be given together or not at all. Pass what the patterns were made from.")
+    eye = _eye(prepared, ocean, patterns, views)
     lead = patterns["relative_sea_level_coefficients"].dims[:-2]
-    table = np.empty((len(views), len(_FIELDS), *coefficients.shape[1:-1]))
-    area = np.full(len(views), np.nan)
-    eye = _Eye(prepared, ocean, grid, coefficients)
+    table = np.empty((len(views), len(_FIELDS), *eye.coefficients.shape[1:-1]))
+    area, count = np.full(len(views), np.nan), np.zeros(len(views), dtype=np.int64)
     for row, (name, view) in enumerate(views.items()):
-        if view.gauges is not None:
-            table[row] = _at_gauges(patterns, view)
+        if view.gauges is None:
+            table[row], area[row] = eye.means(name, view)
             continue
-        table[row], area[row] = eye.means(name, view)
-    return _dataset(prepared, patterns, list(views), table, area, lead)
+        count[row] = len(view.gauges)
+        here = _at_gauges(prepared, patterns, view.gauges, outlines, load)
+        table[row] = here @ _weights(name, view.gauges)
+    out = _dataset(prepared, patterns, list(views), table, tuple(map(str, lead)))
+    out["seen_area"] = ("view", area, {"units": "m2", "long_name": "ocean area that is seen"})
+    out["number_of_gauges"] = ("view", count, {"units": "1", "long_name": "gauges of the view"})
+    return out
 
 
 @dataclass(frozen=True)
 class _Eye:
-    """The fields (field, ..., n) as coefficients, and the ocean they are averaged over."""
+    """The fields (field, ..., n) as coefficients, and the ocean they are averaged over: cells on rings, coefficients."""
 
     prepared: Prepared
-    ocean: xr.DataArray
     grid: Grid
+    rings: Array
+    ocean: Complex
     coefficients: Complex
 
     def means(self, name: str, view: View) -> tuple[Array, float]:
@@ -120,49 +176,59 @@ class _Eye:
             seen = self.prepared.operator.ocean
         else:
             sums, whole = self._band(view.south, view.north)
-            _refuse_nothing(name, whole)
+            cells = float((self.rings * self._within(view)).sum() * 2.0 * np.pi / self.grid.nlon)
+            _refuse_nothing(name, min(whole, cells))
+            if not 1.0 / _RIPPLE < whole / cells < _RIPPLE:
+                raise InputError(
+                    f"views: degree {self.prepared.max_degree} cannot tell the little ocean in {name!r}. Widen it."
+                )
             return sums / whole, whole * square
         whole = float(seen[0].real) * np.sqrt(4.0 * np.pi)
         _refuse_nothing(name, whole)
         return _inner(self.coefficients, seen) / whole, whole * square
 
+    def _within(self, view: View) -> Array:
+        """Sine of latitude that each ring (nlat, 1), north first, has between the latitudes of a view."""
+        edges = np.linspace(90.0, -90.0, self.grid.nlat + 1)
+        sines = np.sin(np.deg2rad(np.clip(edges, view.south, view.north)))
+        return -np.diff(sines)[:, None]
+
     def _cells(self, view: View) -> Complex:
         """Coefficients of the ocean seen in each cell, as the solver analyses its ocean."""
-        share = self.ocean.transpose("lat", "lon").values.astype(np.float64)
+        share = self.rings * self._within(view) / self._within(View())
         if view.mask is not None:
-            share = share * view.mask.transpose("lat", "lon").values
+            share *= _on_rings(view.mask, self.grid)
         if view.away_from_land > 0.0:
-            share = share * (self._distance_from_land() > view.away_from_land)
-        latitude = self.ocean["lat"].values[:, None]
-        half = 90.0 / self.grid.nlat
-        low, high = np.clip([latitude - half, latitude + half], view.south, view.north)
-        sines = [np.sin(np.deg2rad(edge)) for edge in (low, high, latitude - half, latitude + half)]
-        share = share * (sines[1] - sines[0]) / (sines[3] - sines[2])
-        rings = self.grid.to_rings(share)
-        return _transform.analyse(rings, min(self.grid.band_limit, self.prepared.max_degree), self.grid.first_azimuth)
+            share *= self._distance_from_land > view.away_from_land
+        degree = min(self.grid.band_limit, self.prepared.max_degree)
+        return _transform.analyse(share, degree, self.grid.first_azimuth)
 
+    @cached_property
     def _distance_from_land(self) -> Array:
-        """Kilometres from each cell's centre to the nearest centre of a cell that is mostly land; infinite without land."""
-        latitude, longitude = np.meshgrid(self.ocean["lat"], self.ocean["lon"], indexing="ij")
-        land = self.ocean.transpose("lat", "lon").values < 0.5
-        out = np.full(land.shape, np.inf)
-        if land.any():
+        """Kilometres (nlat, nlon) from each cell's centre to that of the nearest cell mostly land; infinite without land."""
+        grid, land = self.grid, self.rings < 0.5
+        latitude, longitude = (
+            np.broadcast_to(axis, land.shape)
+            for axis in (
+                np.sort(grid.latitudes)[::-1][:, None],
+                np.rad2deg(grid.first_azimuth) + 360.0 / grid.nlon * np.arange(grid.nlon),
+            )
+        )
+        out = np.where(land, 0.0, np.inf)
+        if land.any() and not land.all():
             sea = ~land
             out[sea] = distance_between((latitude[sea], longitude[sea]), (latitude[land], longitude[land]))
-            out[land] = 0.0
         return out
 
     def _band(self, south: float, north: float) -> tuple[Array, float]:
         """Integrals over the unit sphere of each field (field, ...) and of 1, over the ocean between two latitudes."""
         highest = self.prepared.max_degree
-        level = min(self.grid.band_limit, 2 * highest)
-        rings = self.grid.to_rings(self.ocean.transpose("lat", "lon").values)
-        ocean = _transform.analyse(rings, level, self.grid.first_azimuth)
+        level = _transform.degree_of_count(self.ocean.size)
         sines = np.sin(np.deg2rad([south, north]))
         nodes, weights = np.polynomial.legendre.leggauss((highest + level) // 2 + 1)
         colatitude = np.arccos(0.5 * (sines.sum() + (sines[1] - sines[0]) * nodes))
         cells = int(ducc0.fft.good_size(highest + level + 1, True))
-        seen = _transform.synthesise_on(ocean, colatitude, cells)
+        seen = _transform.synthesise_on(self.ocean, colatitude, cells)
         seen *= (0.5 * (sines[1] - sines[0]) * weights * 2.0 * np.pi / cells)[:, None]
         flat = self.coefficients.reshape((-1, self.coefficients.shape[-1]))
         sums = [float(np.sum(_transform.synthesise_on(row, colatitude, cells) * seen)) for row in flat]
@@ -182,38 +248,70 @@ def _refuse_nothing(name: str, whole: float) -> None:
         raise InputError(f"views: {name!r} sees no ocean. Widen its latitudes or its mask, or come nearer to land.")
 
 
-def _at_gauges(patterns: xr.Dataset, view: View) -> Array:
-    sites = check_sites(view.gauges, argument="gauges") if view.gauges is not None else pd.DataFrame()
-    return np.stack([values_at(patterns[f"{name}_coefficients"], sites).mean(axis=-1) for name in _FIELDS])
+def _at_gauges(
+    prepared: Prepared,
+    patterns: xr.Dataset,
+    gauges: pd.DataFrame,
+    outlines: gpd.GeoDataFrame | None,
+    load: xr.DataArray | None,
+) -> Array:
+    """Fields (field, ..., site) as the commands print them: tapered, with the near field where the outlines are known."""
+    values = at_sites(patterns[[f"{name}_coefficients" for name in _FIELDS]], gauges)
+    if outlines is None or load is None:
+        return np.stack([values[f"{name}_tapered"].values for name in _FIELDS])
+    frame = patterns.attrs.get("reference_frame", "")
+    near = near_field(prepared, outlines, load, gauges, reference_frame=frame)
+    complete = smoothed(add_near_field(values, near))
+    return np.stack([complete[name].values for name in _FIELDS])
 
 
-def _checked(
-    prepared: Prepared, ocean: xr.DataArray, patterns: xr.Dataset, views: Mapping[str, View]
-) -> tuple[Grid, Complex]:
-    """Grid of the ocean and coefficients (field, ..., n) of the patterns, once all is sound."""
+def _weights(name: str, gauges: pd.DataFrame) -> Array:
+    """Share (site,) of each gauge in the mean; they sum to 1."""
+    if "weight" not in gauges:
+        return np.full(len(gauges), 1.0 / len(gauges))
+    weights = pd.to_numeric(gauges["weight"], errors="coerce").to_numpy(dtype=np.float64)
+    bad = np.flatnonzero(~(np.isfinite(weights) & (weights >= 0.0)))
+    if bad.size:
+        site, given = gauges["site"].iloc[bad[0]], gauges["weight"].iloc[bad[0]]
+        raise SiteError(f"gauges of {name!r}: site {str(site)!r}: weight must be a number of 0 or more, got {given}.")
+    if not weights.sum() > 0.0:
+        raise SiteError(f"gauges of {name!r}: every weight is 0. Give at least one gauge a weight above 0.")
+    return weights / weights.sum()
+
+
+def _on_rings(mask: xr.DataArray, grid: Grid) -> Array:
+    """Mask (nlat, nlon), north first, beginning at the same longitude as the rings of ``grid``."""
+    own = grid_of(mask)
+    turn = round((own.first_azimuth - grid.first_azimuth) / (2.0 * np.pi) * grid.nlon)
+    return np.roll(own.to_rings(mask.transpose("lat", "lon").values), turn, axis=-1)
+
+
+def _eye(prepared: Prepared, ocean: xr.DataArray, patterns: xr.Dataset, views: Mapping[str, View]) -> _Eye:
+    """What the means are made from, once all is sound."""
     if not isinstance(prepared, Prepared):
         raise InputError(f"prepared: must come from prepare_solver, got {type(prepared).__name__}.")
-    grid = grid_of(ocean, argument="ocean")
-    if (grid.nlat, grid.nlon) != (prepared.grid.nlat, prepared.grid.nlon):
-        held = f"{prepared.grid.nlat} x {prepared.grid.nlon}"
-        raise GridError(
-            f"ocean: has {grid.nlat} x {grid.nlon} cells, the solver {held}. Pass the ocean it was prepared from."
-        )
+    check_views(views, ocean)
+    grid, highest = grid_of(ocean, argument="ocean"), prepared.max_degree
+    rings = grid.to_rings(ocean.transpose("lat", "lon").values)
+    fraction = _transform.analyse(rings, min(grid.band_limit, 2 * highest), grid.first_azimuth)
+    away = np.abs(_transform.resized(fraction, highest) - prepared.operator.ocean).max()
+    if (grid.nlat, grid.nlon) != (prepared.grid.nlat, prepared.grid.nlon) or not away < _SAME_OCEAN:
+        raise GridError("ocean: is another one than the solver was prepared from. Pass the same DataArray to both.")
     missing = [name for name in _FIELDS if f"{name}_coefficients" not in patterns]
     if missing:
         raise InputError(f"patterns: holds no {missing[0]}_coefficients. Solve with outputs={_FIELDS}.")
     for name in _FIELDS:
-        if patterns[f"{name}_coefficients"].attrs.get("units") != "mm Gt-1":
+        held = patterns[f"{name}_coefficients"]
+        if held.attrs.get("units") != "mm Gt-1":
             raise InputError(f"patterns: {name} must be in mm Gt-1. Solve with a load in kg m-2 Gt-1.")
-    if not views:
-        raise InputError("views: name at least one, such as {'whole ocean': View()}.")
-    for name, view in views.items():
-        _check_view(name, view, ocean)
+        found = _transform.degree_of_count(held.sizes["coefficient"])
+        if found != highest:
+            raise InputError(f"patterns: end at degree {found}, the solver at {highest}. Pass what this solver gave.")
     pairs = np.stack([patterns[f"{n}_coefficients"].transpose(..., "part", "coefficient").values for n in _FIELDS])
-    return grid, _transform.complex_from_real(pairs)
+    return _Eye(prepared, grid, rings, fraction, _transform.complex_from_real(pairs))
 
 
-def _check_view(name: str, view: View, ocean: xr.DataArray) -> None:
+def _check_view(name: str, view: View, grid: Grid) -> None:
     for side, value in (("south", view.south), ("north", view.north)):
         real_number(value, argument=f"{side} of {name!r}", allowed="a latitude from -90 to 90", low=-90.0, high=90.0)
     if not view.south < view.north:
@@ -224,24 +322,32 @@ def _check_view(name: str, view: View, ocean: xr.DataArray) -> None:
         if view.by_cells or (view.south, view.north) != (-90.0, 90.0):
             raise InputError(f"views: {name!r} has gauges and an area. Give each a view of its own.")
         check_sites(view.gauges, argument="gauges")
-    if view.mask is None:
-        return
-    mask = view.mask
-    if set(mask.dims) != {"lat", "lon"} or any(
-        mask.sizes[dim] != ocean.sizes[dim] or not np.allclose(mask[dim], ocean[dim]) for dim in ("lat", "lon")
-    ):
+        _weights(name, view.gauges)
+    if view.mask is not None:
+        _check_mask(name, view.mask, grid)
+
+
+def _check_mask(name: str, mask: xr.DataArray, grid: Grid) -> None:
+    argument = f"mask of {name!r}"
+    if not isinstance(mask, xr.DataArray) or set(mask.dims) != {"lat", "lon"}:
+        raise GridError(f"{argument}: must be a DataArray (lat, lon). Select one field first.")
+    own = grid_of(mask, argument=argument)
+    cells = (own.first_azimuth - grid.first_azimuth) / (2.0 * np.pi) * grid.nlon
+    if (own.nlat, own.nlon) != (grid.nlat, grid.nlon) or abs(cells - round(cells)) > _SAME_CELLS:
         raise GridError(
-            f"mask of {name!r}: must have the ocean's own lat and lon. Interpolate it onto that grid first."
+            f"{argument}: has {own.nlat} x {own.nlon} cells, the ocean {grid.nlat} x {grid.nlon}; they must have the same "
+            "cells. Interpolate it onto the ocean's lat and lon first."
         )
-    check_finite(mask, argument=f"mask of {name!r}")
+    check_finite(mask, argument=argument)
     low, high = float(mask.min()), float(mask.max())
     if low < 0.0 or high > 1.0:
-        raise GridError(f"mask of {name!r}: shares must lie between 0 and 1, got {low:g} to {high:g}.")
+        raise GridError(f"{argument}: shares must lie between 0 and 1, got {low:g} to {high:g}.")
 
 
 def _dataset(
-    prepared: Prepared, patterns: xr.Dataset, names: list[str], table: Array, area: Array, lead: tuple[object, ...]
+    prepared: Prepared, patterns: xr.Dataset, names: list[str], table: Array, lead: tuple[str, ...]
 ) -> xr.Dataset:
+    """Means (view, field, ...) in mm Gt-1 labelled, with the ratios made of them."""
     held = patterns["relative_sea_level_coefficients"]
     coords = {key: value for key, value in held.coords.items() if set(value.dims) <= set(lead)}
     out = xr.Dataset(coords={"view": np.array(names, dtype=object), **coords})
@@ -253,7 +359,7 @@ def _dataset(
     }
     for column, (name, meaning) in enumerate(words.items()):
         attrs = {"units": "mm Gt-1", "long_name": f"mean {meaning} over what is seen, per gigatonne added"}
-        out[name] = (("view", *map(str, lead)), table[:, column], attrs)
+        out[name] = (("view", *lead), table[:, column], attrs)
     parts = {
         "ratio_sea_surface": (out["sea_surface"] / true, "seen from above, over the true mean"),
         "ratio_relative_sea_level": (out["relative_sea_level"] / true, "seen by gauges, over the true mean"),
@@ -263,5 +369,4 @@ def _dataset(
     for name, (values, meaning) in parts.items():
         out[name] = values.assign_attrs(units="1", long_name=meaning)
     out["barystatic"] = ((), true, {"units": "mm Gt-1", "long_name": "true mean per gigatonne added"})
-    out["seen_area"] = ("view", area, {"units": "m2", "long_name": "ocean area that is seen"})
     return out.assign_attrs(reference_frame=patterns.attrs.get("reference_frame", ""))
