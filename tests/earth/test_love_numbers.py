@@ -48,9 +48,9 @@ def test_second_method_agrees(degree, love):
     "name", ["prem_200s", "prem_oceanic", "prem_continental", "prem_no_crust", "prem_as_published"]
 )
 def test_second_method_agrees_on_every_realistic_earth(name):
-    """As above for three degrees that see the core, the mantle, the crust. Uniform and layered spheres have closed forms."""
+    """As above for two degrees, one that sees the whole Earth, one the crust. Uniform and layered spheres have closed forms."""
     ours, other = love_numbers(name, max_degree=400), Scaled(MODELS[name].make())
-    for degree in (2, 20, 400):
+    for degree in (2, 400):
         second = load_and_tide(degree, other)
         for number, b in zip(NAMES, second, strict=True):
             assert float(ours[number][degree]) == pytest.approx(b, rel=1e-8, abs=1e-12), (number, degree)
