@@ -2,7 +2,6 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -11,10 +10,9 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from massfingerprint.cli._mass_rates import mass_rates, spread
+from massfingerprint.cli._record import OF_A_RECORD, record_of
 from massfingerprint.errors import InputError
-from massfingerprint.mass.ledger import read_ledger
 from massfingerprint.mass.rates import DAYS_PER_YEAR, check_windows, rate_weights
-from massfingerprint.mass.scope import check_scope, corrections, ledger_scopes
 from massfingerprint.sealevel.observed_pole import centimetres
 from massfingerprint.sealevel.series import sea_level_rates, sea_level_series
 from massfingerprint.sealevel.whole_earth import pole_direction
@@ -160,18 +158,16 @@ def _extents(ledger: xr.Dataset, window: Window) -> NDArray[np.datetime64]:
     return np.array([[times[at] for times in held if times.size] for at in (0, -1)], dtype="datetime64[ns]")
 
 
-def _from_ledger(path: Path, options: dict[str, Any]) -> Mass:
-    ledger = read_ledger(path, quantity=options["quantity"], error_model=options["error_model"])
-    corrections(ledger)
-    names = [str(name) for name in ledger["source"].values]
-    kept = check_scope(names, scopes=ledger_scopes(ledger), drop=options["drop"])
-    ledger = ledger.isel(source=[names.index(name) for name in kept])
+def _from_ledger(options: dict[str, Any]) -> Mass:
+    ledger = record_of(options)
     time = ledger["time"].values
     given = options["window"]
     window = (time[0], time[-1]) if given is None else check_windows({"--window": given})["--window"]
     _check_values(ledger, window, options["seasonal"])
     ends = _extents(ledger, window)
-    return Mass(kept, (ends[0].min(), ends[1].max()), ledger, options["seasonal"])
+    return Mass(
+        [str(name) for name in ledger["source"].values], (ends[0].min(), ends[1].max()), ledger, options["seasonal"]
+    )
 
 
 def _check_values(ledger: xr.Dataset, window: Window, seasonal: bool) -> None:
@@ -201,8 +197,8 @@ def mass_of(options: dict[str, Any]) -> Mass:
             "massfingerprint ledger published lists the sets."
         )
     if options["ledger_file"] is not None:
-        return _from_ledger(options["ledger_file"], options)
-    for name in ("window", "error_model", "drop", "seasonal"):
+        return _from_ledger(options)
+    for name in ("window", *OF_A_RECORD, "seasonal"):
         if options[name]:
             raise InputError(
                 f"--{name.replace('_', '-')}: goes with --ledger only; constant rates hold for their own period."

@@ -15,6 +15,7 @@ from massfingerprint.cli._earth_rates import Drift, Mass, days, mass_of
 from massfingerprint.cli._figures import figure_kind
 from massfingerprint.cli._problem import Problem, problem_options
 from massfingerprint.cli._progress import progress
+from massfingerprint.cli._record import record_options
 from massfingerprint.cli._tables import as_json, rendered
 from massfingerprint.errors import InputError
 from massfingerprint.files.atomic import write_binary, write_text
@@ -322,22 +323,7 @@ def _draw(path: Path, answer: _Answer, found: xr.Dataset | None) -> None:
 
 
 @click.command(name="motions")
-@click.option(
-    "--ledger",
-    "ledger_file",
-    type=click.Path(path_type=Path),
-    help="Mass record, CSV or NetCDF, as of massfingerprint ledger.",
-)
-@click.option(
-    "--quantity",
-    default="cumulative",
-    show_default=True,
-    type=click.Choice(["cumulative", "rate"]),
-    help="What the record holds.",
-)
-@click.option("--error-model", default=None, help="independent, systematic or random_walk, if the record does not say.")
-@click.option("--drop", multiple=True, help="Leave out this source of the record.")
-@click.option("--seasonal", is_flag=True, help="Fit a yearly cycle beside the rates of the record.")
+@record_options
 @click.option("--window", nargs=2, default=None, help="START END of the record, ISO dates. Default: all of it.")
 @click.option(
     "--rates", "rates_file", type=click.Path(path_type=Path), help="Instead: CSV of mass rates, Gt/yr, negative = loss."

@@ -13,6 +13,7 @@ import xarray as xr
 from massfingerprint.cli._mass_rates import mass_rates
 from massfingerprint.cli._problem import Problem, problem_options
 from massfingerprint.cli._progress import progress
+from massfingerprint.cli._record import OF_A_RECORD, record_of, record_options
 from massfingerprint.cli._tables import as_json, rendered
 from massfingerprint.coast.station_rates import station_rates, station_series
 from massfingerprint.coast.station_report import (
@@ -31,10 +32,7 @@ from massfingerprint.files.netcdf import write_cf_netcdf
 from massfingerprint.files.tables import csv_text
 from massfingerprint.load.regions import regions
 from massfingerprint.load.spread import spread_mass
-from massfingerprint.mass.correlation import read_correlation, with_correlation
 from massfingerprint.mass.intervals import INTERVALS, interval_factor
-from massfingerprint.mass.ledger import read_ledger
-from massfingerprint.mass.scope import check_scope, corrections, ledger_scopes
 from massfingerprint.sealevel.coasts import coast_values
 from massfingerprint.study.metadata import CAUTION, now
 
@@ -66,18 +64,11 @@ class _Answer:
 def _ledger(options: dict[str, Any]) -> xr.Dataset:
     """Mass record, no ice counted twice."""
     if options["published_set"] is not None:
-        for name in ("error_model", "correlation", "drop"):
+        for name in OF_A_RECORD:
             if options[name]:
                 raise InputError(f"--{name.replace('_', '-')}: goes with --ledger only, not with --published.")
         return constant_ledger(mass_rates(None, options["published_set"]))
-    ledger = read_ledger(options["ledger_file"], quantity=options["quantity"], error_model=options["error_model"])
-    corrections(ledger)
-    names = [str(name) for name in ledger["source"].values]
-    kept = check_scope(names, scopes=ledger_scopes(ledger), drop=options["drop"])
-    ledger = ledger.sel(source=kept)
-    return (
-        ledger if options["correlation"] is None else with_correlation(ledger, read_correlation(options["correlation"]))
-    )
+    return record_of(options)
 
 
 def _read(options: dict[str, Any]) -> _Given:
@@ -218,19 +209,7 @@ def _data(answer: _Answer, paragraphs: list[str], options: dict[str, Any]) -> st
     type=click.Path(path_type=Path),
     help="CSV with station, and lat, lon or x [m], y [m], z [m]; optional start, end, gaps.",
 )
-@click.option(
-    "--ledger", "ledger_file", type=click.Path(path_type=Path), help="Mass record, as of massfingerprint ledger."
-)
-@click.option(
-    "--quantity",
-    default="cumulative",
-    show_default=True,
-    type=click.Choice(["cumulative", "rate"]),
-    help="What the record holds.",
-)
-@click.option("--error-model", default=None, help="independent, systematic or random_walk, if the record does not say.")
-@click.option("--correlation", type=click.Path(path_type=Path), help="CSV of correlations between sources.")
-@click.option("--drop", multiple=True, help="Leave out this source of the record.")
+@record_options
 @click.option("--published", "published_set", help="Instead: a set of published rates, e.g. 'otosaka 2023'.")
 @click.option(
     "--series",
@@ -251,7 +230,6 @@ def _data(answer: _Answer, paragraphs: list[str], options: dict[str, Any]) -> st
     type=click.Choice(list(FRAME_WORDS)),
     help="Origin the motion refers to.",
 )
-@click.option("--seasonal", is_flag=True, help="Fit a yearly cycle beside the rates.")
 @click.option(
     "--overlap", is_flag=True, help="Where the record is shorter than a station: the rate over what they share."
 )

@@ -12,6 +12,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from massfingerprint import vocabulary
 from massfingerprint.arguments import one_of
 from massfingerprint.errors import InputError, UnitsError, nearest_names
 from massfingerprint.mass.covariance import COMPONENTS, component_covariance, cross_covariance, source_correlation
@@ -217,8 +218,6 @@ def mass_components(values: xr.Dataset, ledger: xr.Dataset) -> dict[str, Compone
 
 def _table(part: xr.DataArray, argument: str) -> tuple[xr.DataArray, float]:
     """Series with sound coordinates, and the factor to mm."""
-    from massfingerprint import vocabulary  # noqa: PLC0415  its import of units takes long
-
     if (
         not isinstance(part, xr.DataArray)
         or set(part.dims) != {"time", "site"}

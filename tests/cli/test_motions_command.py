@@ -26,7 +26,7 @@ RATES = "time_start,time_end,source,mass_rate [Gt yr-1],mass_rate_sigma [Gt yr-1
 COARSE = ["--max-degree", "64", "--spacing", "2", "--quiet"]
 WIDE = 1.959963984540054  # standard deviations of 95 %
 AS_JSON = ["--interval", "95 %", "--stokes-degree", "3", "--json"]
-RECORD = dict.fromkeys(("ledger_file", "rates_file", "published_set", "window", "error_model"))
+RECORD = dict.fromkeys(("ledger_file", "rates_file", "published_set", "window", "error_model", "correlation"))
 RECORD |= {"quantity": "cumulative", "drop": (), "seasonal": False}
 
 

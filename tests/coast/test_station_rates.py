@@ -6,12 +6,7 @@ import pytest
 import xarray as xr
 
 from massfingerprint.coast.station_rates import station_rates, station_series
-from massfingerprint.coast.station_report import (
-    constant_ledger,
-    station_flags,
-    station_residuals,
-    station_table,
-)
+from massfingerprint.coast.station_report import constant_ledger, station_flags, station_residuals, station_table
 from massfingerprint.coast.stations import COMPONENTS
 from massfingerprint.errors import InputError, UnitsError
 from tests.mass.ledgers import draws, make_ledger
