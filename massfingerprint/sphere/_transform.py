@@ -165,6 +165,17 @@ def gradient(coefficients: Complex, shape: tuple[int, int], first_azimuth: float
     return out
 
 
+def _as_rings(colatitude: Array, azimuth: Array) -> dict[str, Any]:
+    """Points as rings of one cell each, for the library."""
+    count = colatitude.size
+    return {
+        "theta": np.ascontiguousarray(colatitude, dtype=np.float64),
+        "phi0": np.ascontiguousarray(azimuth, dtype=np.float64),
+        "nphi": np.ones(count, dtype=np.uint64),
+        "ringstart": np.arange(count, dtype=np.uint64),
+    }
+
+
 def gradient_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Array:
     """Surface gradient (..., 2, npoint), north and east, of fields (..., n) at points (radians)."""
     lead, count = coefficients.shape[:-1], colatitude.size
@@ -173,10 +184,7 @@ def gradient_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> Arr
         return np.zeros((*lead, 2, count))
     values = ducc0.sht.synthesis(
         alm=rows,
-        theta=np.ascontiguousarray(colatitude, dtype=np.float64),
-        phi0=np.ascontiguousarray(azimuth, dtype=np.float64),
-        nphi=np.ones(count, dtype=np.uint64),
-        ringstart=np.arange(count, dtype=np.uint64),
+        **_as_rings(colatitude, azimuth),
         spin=1,
         lmax=degree_of_count(coefficients.shape[-1]),
         mode="DERIV1",
@@ -211,10 +219,7 @@ def synthesise_at(coefficients: Complex, colatitude: Array, azimuth: Array) -> A
         return np.zeros((*lead, count))
     values = ducc0.sht.synthesis(
         alm=rows,
-        theta=np.ascontiguousarray(colatitude, dtype=np.float64),
-        phi0=np.ascontiguousarray(azimuth, dtype=np.float64),
-        nphi=np.ones(count, dtype=np.uint64),
-        ringstart=np.arange(count, dtype=np.uint64),
+        **_as_rings(colatitude, azimuth),
         spin=0,
         lmax=degree_of_count(coefficients.shape[-1]),
         nthreads=options.threads(),
