@@ -9,6 +9,9 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from massfingerprint.coast.budget import budget, closure
     from massfingerprint.coast.components import component, mass_components, rate_component
+    from massfingerprint.coast.gauge_corrections import inverse_barometer, nodal_tide
+    from massfingerprint.coast.gauge_trend import TrendModel, gauge_trend
+    from massfingerprint.coast.gauges import read_gauge, read_gauges
     from massfingerprint.coast.land_motion import Uplift, residual_land_motion, whole_land_motion
     from massfingerprint.coast.observers import View, observed_means
     from massfingerprint.coast.station_rates import station_rates, station_series
@@ -70,12 +73,15 @@ _HOMES = {
     "earth_model": "earth.models",
     "earth_numbers": "sealevel.whole_earth",
     "extend_love_numbers": "earth.love",
+    "gauge_trend": "coast.gauge_trend",
     "geocentric_latitude": "load.latitudes",
     "in_frame": "earth.frames",
+    "inverse_barometer": "coast.gauge_corrections",
     "load_modes": "load.modes",
     "love_numbers": "earth.love",
     "mass_components": "coast.components",
     "near_field": "sealevel.nearfield",
+    "nodal_tide": "coast.gauge_corrections",
     "observed_drift": "sealevel.observed_pole",
     "observed_means": "coast.observers",
     "ocean_fraction": "load.ocean",
@@ -87,6 +93,8 @@ _HOMES = {
     "rates": "mass.rates",
     "read_correlation": "mass.correlation",
     "read_earth_model": "earth.table",
+    "read_gauge": "coast.gauges",
+    "read_gauges": "coast.gauges",
     "read_ledger": "mass.ledger",
     "read_love_numbers": "earth.own_love",
     "read_regions": "load.regions",
@@ -109,6 +117,7 @@ _HOMES = {
     "station_rates": "coast.station_rates",
     "station_series": "coast.station_rates",
     "sum_sources": "mass.combine",
+    "TrendModel": "coast.gauge_trend",
     "Uplift": "coast.land_motion",
     "View": "coast.observers",
     "whole_land_motion": "coast.land_motion",
@@ -119,6 +128,7 @@ _HOMES = {
 
 __all__ = [
     "RotationConstants",
+    "TrendModel",
     "Uplift",
     "View",
     "add_near_field",
@@ -138,12 +148,15 @@ __all__ = [
     "earth_model",
     "earth_numbers",
     "extend_love_numbers",
+    "gauge_trend",
     "geocentric_latitude",
     "in_frame",
+    "inverse_barometer",
     "load_modes",
     "love_numbers",
     "mass_components",
     "near_field",
+    "nodal_tide",
     "observed_drift",
     "observed_means",
     "ocean_fraction",
@@ -155,6 +168,8 @@ __all__ = [
     "rates",
     "read_correlation",
     "read_earth_model",
+    "read_gauge",
+    "read_gauges",
     "read_ledger",
     "read_love_numbers",
     "read_regions",

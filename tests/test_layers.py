@@ -37,7 +37,7 @@ ONLY_IN = {
     "dask": {"ensemble"},
     "bokeh": {"web"},
     "panel": {"web"},
-    "statsmodels": {"coast"},
+    "gsw": {"coast"},
     "click": {"cli"},
     "pint": {"vocabulary"},
     "cf_xarray": {"vocabulary"},
