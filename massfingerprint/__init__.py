@@ -7,15 +7,17 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from massfingerprint.coast.budget import budget, closure
+    from massfingerprint.coast.budget import budget
+    from massfingerprint.coast.closure import closure
     from massfingerprint.coast.components import component, mass_components, rate_component
     from massfingerprint.coast.gauge_corrections import inverse_barometer, nodal_tide
-    from massfingerprint.coast.gauge_trend import TrendModel, gauge_trend
+    from massfingerprint.coast.gauge_trend import gauge_trend
     from massfingerprint.coast.gauges import read_gauge, read_gauges
     from massfingerprint.coast.land_motion import Uplift, residual_land_motion, whole_land_motion
     from massfingerprint.coast.observers import View, observed_means
     from massfingerprint.coast.station_rates import station_rates, station_series
     from massfingerprint.coast.stations import read_station_series, read_stations
+    from massfingerprint.coast.trend_model import TrendModel
     from massfingerprint.earth.frames import in_frame
     from massfingerprint.earth.love import compute_love_numbers, extend_love_numbers, love_numbers
     from massfingerprint.earth.models import earth_model
@@ -64,7 +66,7 @@ _HOMES = {
     "budget": "coast.budget",
     "check_scope": "mass.scope",
     "choice_table": "sealevel.choices",
-    "closure": "coast.budget",
+    "closure": "coast.closure",
     "coast_values": "sealevel.coasts",
     "component": "coast.components",
     "compute_love_numbers": "earth.love",
@@ -117,7 +119,7 @@ _HOMES = {
     "station_rates": "coast.station_rates",
     "station_series": "coast.station_rates",
     "sum_sources": "mass.combine",
-    "TrendModel": "coast.gauge_trend",
+    "TrendModel": "coast.trend_model",
     "Uplift": "coast.land_motion",
     "View": "coast.observers",
     "whole_land_motion": "coast.land_motion",

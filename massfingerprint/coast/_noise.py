@@ -236,6 +236,32 @@ def _information(
     return information, gradient
 
 
+def variance_of(held: Fit, index: Index, weights: Array) -> float:
+    """Variance of a weighted sum of the noise; the weights (n,) add to 0 where only differences have a variance."""
+    if held.model == "white":
+        return float(held.scale**2 * weights @ weights)
+    if held.model == "power_law":
+        covariance = power_law_covariance(float(held.theta[0]), index)
+    else:
+        phi = off_zero(float(held.theta[0]))
+        covariance = phi ** np.abs(index[:, None] - index[None, :]).astype(np.float64)
+        if held.model == "arma11":
+            share = arma_share(phi, float(held.theta[1]))
+            covariance = share * covariance + (1.0 - share) * np.eye(index.size)
+    return float(held.scale**2 * weights @ covariance @ weights)
+
+
+def arma_share(phi: float, theta: float) -> float:
+    """The share w of C = w phi^|i-j| + (1 - w) 1 of arma11; phi is kept off 0, where nothing can be told from it."""
+    phi = off_zero(phi)
+    return arma_neighbours(phi, theta) / phi
+
+
+def off_zero(phi: float) -> float:
+    """An autoregressive parameter that arma11 can be divided by."""
+    return float(np.copysign(_SMALLEST_AR, phi)) if abs(phi) < _SMALLEST_AR else phi
+
+
 def inverse_times(model: str, theta: Array, index: Index, columns: Array) -> tuple[Array, float]:
     """Product (n, k) of the inverse of the covariance with columns (n, k), and the logarithm of its determinant.
 
@@ -247,15 +273,15 @@ def inverse_times(model: str, theta: Array, index: Index, columns: Array) -> tup
         factor = linalg.cho_factor(power_law_covariance(float(theta[0]), index), lower=True, check_finite=False)
         return linalg.cho_solve(factor, columns, check_finite=False), 2.0 * float(np.log(np.diag(factor[0])).sum())
     phi = float(theta[0])
-    if model == "arma11" and abs(phi) < _SMALLEST_AR:
-        phi = float(np.copysign(_SMALLEST_AR, phi))
+    if model == "arma11":
+        phi = off_zero(phi)
     diagonal, beside, log_determinant = _chain(phi, index)
     products = diagonal[:, None] * columns
     products[:-1] += beside[:, None] * columns[1:]
     products[1:] += beside[:, None] * columns[:-1]
     if model == "ar1":
         return products, log_determinant
-    share = arma_neighbours(phi, float(theta[1])) / phi
+    share = arma_share(phi, float(theta[1]))
     band = np.zeros((2, index.size))
     band[1] = share + (1.0 - share) * diagonal
     band[0, 1:] = (1.0 - share) * beside

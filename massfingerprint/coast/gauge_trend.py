@@ -19,8 +19,7 @@ The price is width: under ar1, 20 or 40 yearly means have a median interval two 
 (1.645 standard deviations to each side). A known noise can be named.
 """
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -30,58 +29,19 @@ from scipy import stats
 
 from massfingerprint.arguments import one_of
 from massfingerprint.coast import _noise
-from massfingerprint.coast.gauge_corrections import NODAL_PERIOD, nodal_tide, node
-from massfingerprint.coast.gauges import SAMPLINGS, sampling_of
+from massfingerprint.coast.gauge_corrections import nodal_tide
+from massfingerprint.coast.trend_model import NODAL, Series, TrendModel, design_of, kept_series, steps_of
 from massfingerprint.errors import InputError
-from massfingerprint.mass.rates import DAYS_PER_YEAR, check_windows
+from massfingerprint.mass.rates import check_windows
 
 Array = NDArray[np.float64]
 Times = NDArray[np.datetime64]
 NOISES = tuple(_noise.BOUNDS)
 CRITERIA = ("AICc", "BIC")
-NODAL = ("none", "equilibrium", "fit")
 AS_GOOD = 2.0  # of the criterion: models closer to the best one are not told apart
 CONFIDENCE = 0.90
-_LEAST_YEARS = 3  # calendar years with a value
-_NODAL_CYCLES = 2.0  # of the nodal tide that a record must hold to fit it
-_DISTINCT = 1e-3  # smallest singular value of the normalised regressors
 _NO_NOISE = 1e-9  # mm: rounding of levels of some metres is a thousandth of it
 _PARAMETERS = ("ar", "ma", "spectral_index")
-
-
-@dataclass(frozen=True, kw_only=True)
-class TrendModel:
-    """What is fitted beside a level and a rate.
-
-    Parameters
-    ----------
-    acceleration : bool
-        A quadratic; the rate is then that in the middle of the epochs used.
-    seasonal : bool
-        A yearly and a half-yearly cycle, of monthly means only.
-    nodal : str
-        ``"none"``; ``"equilibrium"``: the tide of ``nodal_tide`` is taken off, needs latitudes; ``"fit"``: a cycle of 18.6 years is
-        fitted, needs a record of two cycles.
-    steps : sequence of dates, or mapping of gauge to them
-        Documented shifts of the datum, each at its first epoch after; a sequence counts for every gauge.
-    """
-
-    acceleration: bool = False
-    seasonal: bool = True
-    nodal: str = "none"
-    steps: Sequence[Any] | Mapping[str, Sequence[Any]] = ()
-
-
-@dataclass(frozen=True)
-class _Series:
-    """Kept epochs of one gauge: where they are on the time axis, their times, whole-number steps, values in mm."""
-
-    name: str
-    places: NDArray[np.intp]
-    time: Times
-    index: _noise.Index
-    values: Array
-    monthly: bool
 
 
 def gauge_trend(
@@ -125,7 +85,7 @@ def gauge_trend(
     InputError, UnitsError, SiteError
         If a choice cannot be used, or a gauge has no value, too few years, or regressors that its epochs do not tell apart.
     """
-    model = _checked(levels, model or TrendModel(), noise, criterion)
+    model = checked(levels, model or TrendModel(), noise, criterion)
     span = None if window is None else check_windows({"window": window})["window"]
     names = [str(name) for name in levels["gauge"].values]
     tide = np.zeros((len(names), levels.sizes["time"]))
@@ -133,12 +93,12 @@ def gauge_trend(
         tide = nodal_tide(levels).values
     out = []
     for row, name in enumerate(names):
-        series = _kept(levels, row, span)
-        steps = _steps_of(model.steps, name, series)
-        design = _design(series, model, steps)
+        series = kept_series(levels, row, span)
+        steps = steps_of(model.steps, name, series)
+        design = design_of(series, model, steps)
         corrected = series.values - tide[row, series.places]
-        fits = _fitted(series, design, corrected, noise)
-        chosen = _choose(fits, criterion)
+        fits = fitted(series, design, corrected, noise)
+        chosen = choose(fits, criterion)
         parts = {**_reduced(series, fits[chosen], (design, corrected), model), **_of_models(fits, corrected)}
         parts["nodal_rate"] = ((), fits[chosen].rows[1] @ tide[row, series.places])
         parts |= {"weights": ("time", _spread(fits[chosen].rows[1], series, levels.sizes["time"]))}
@@ -146,7 +106,8 @@ def gauge_trend(
     return _labelled(xr.concat(out, dim="gauge", join="outer"), levels, model, (noise, criterion))
 
 
-def _checked(levels: xr.Dataset, model: TrendModel, noise: str, criterion: str) -> TrendModel:
+def checked(levels: xr.Dataset, model: TrendModel, noise: str, criterion: str) -> TrendModel:
+    """The model, once levels and choices can be used."""
     if not isinstance(levels, xr.Dataset) or "level" not in levels or set(levels["level"].dims) != {"gauge", "time"}:
         raise InputError("levels: must be a Dataset with level (gauge, time). Pass what read_gauges gave.")
     if levels["level"].attrs.get("units") != "mm":
@@ -166,88 +127,7 @@ def _checked(levels: xr.Dataset, model: TrendModel, noise: str, criterion: str) 
     return model
 
 
-def _kept(levels: xr.Dataset, row: int, span: tuple[np.datetime64, np.datetime64] | None) -> _Series:
-    """Epochs of one gauge with a value in the window."""
-    name = str(levels["gauge"].values[row])
-    level = levels["level"].transpose("gauge", "time").values[row].astype(np.float64)
-    time = levels["time"].values.astype("datetime64[ns]")
-    held = np.isfinite(level)
-    if not held.any():
-        raise InputError(f"levels: gauge {name!r} has no value at all. Leave it out.")
-    sampling = levels.attrs.get("sampling") or sampling_of(time, argument="levels")
-    if span is not None:
-        first, last = (str(value)[:10] for value in time[held][[0, -1]])
-        held &= (time >= span[0]) & (time <= span[1])
-        if not held.any():
-            words = f"{str(span[0])[:10]} to {str(span[1])[:10]}"
-            raise InputError(f"window: gauge {name!r} has no value from {words}; it has some from {first} to {last}.")
-    places = np.flatnonzero(held)
-    kept = time[places]
-    years = kept.astype("datetime64[Y]").astype(np.int64)
-    if np.unique(years).size < _LEAST_YEARS:
-        found = np.unique(years).size
-        raise InputError(
-            f"levels: gauge {name!r} has values in {found} calendar years of the window, {_LEAST_YEARS} at least are needed."
-        )
-    monthly = sampling == SAMPLINGS[0]
-    index = kept.astype("datetime64[M]").astype(np.int64) if monthly else years
-    if (np.diff(index) < 1).any():
-        at = str(kept[1:][np.diff(index) < 1][0])[:10]
-        raise InputError(
-            f"levels: gauge {name!r} has two {sampling} means at {at}, or times out of order. Sort, keep one."
-        )
-    return _Series(name, places, kept, index, level[places], monthly)
-
-
-def _steps_of(steps: Any, name: str, series: _Series) -> Times:
-    """Dates of the shifts of one gauge, each with epochs on both sides."""
-    given = steps.get(name, ()) if isinstance(steps, Mapping) else steps
-    out = np.empty(len(given), dtype="datetime64[ns]")
-    for place, value in enumerate(given):
-        try:
-            out[place] = np.datetime64(value, "ns")
-        except (TypeError, ValueError) as error:
-            raise InputError(f"steps: {value!r} of gauge {name!r} is no ISO date such as 1998-01-01.") from error
-        if not series.time[0] < out[place] <= series.time[-1]:
-            first, last = (str(series.time[end])[:10] for end in (0, -1))
-            raise InputError(
-                f"steps: {value} of gauge {name!r} is outside the epochs used, {first} to {last}. Leave it out or widen the window."
-            )
-    return np.sort(out)
-
-
-def _design(series: _Series, model: TrendModel, steps: Times) -> Array:
-    """Columns (n, p): level, rate, acceleration, steps, cycles; checked to be told apart."""
-    days = (series.time - series.time[0]) / np.timedelta64(1, "D")
-    years = (days - 0.5 * days[-1]) / DAYS_PER_YEAR
-    columns = [np.ones_like(years), years]
-    if model.acceleration:
-        columns.append(0.5 * years**2)
-    columns += [(series.time >= step).astype(np.float64) for step in steps]
-    if model.seasonal and series.monthly:
-        for cycles in (1.0, 2.0):
-            columns += [np.cos(2.0 * np.pi * cycles * years), np.sin(2.0 * np.pi * cycles * years)]
-    if model.nodal == "fit":
-        length, needed = days[-1] / DAYS_PER_YEAR, _NODAL_CYCLES * NODAL_PERIOD
-        if length < needed:
-            raise InputError(
-                f"nodal: 'fit' needs {needed:.1f} years, gauge {series.name!r} has {length:.1f}. Use 'equilibrium'."
-            )
-        columns += [np.cos(node(series.time)), np.sin(node(series.time))]
-    design = np.stack(columns, axis=1)
-    if design.shape[0] <= design.shape[1]:
-        raise InputError(
-            f"levels: gauge {series.name!r} has {design.shape[0]} values in the window, more than {design.shape[1]} are needed "
-            "for what is fitted. Fit less, or widen the window."
-        )
-    if np.linalg.svd(design / np.linalg.norm(design, axis=0), compute_uv=False)[-1] < _DISTINCT:
-        raise InputError(
-            f"model: the epochs of gauge {series.name!r} do not tell all of what is fitted apart. Leave out steps or cycles."
-        )
-    return design
-
-
-def _fitted(series: _Series, design: Array, values: Array, noise: str) -> dict[str, _noise.Fit]:
+def fitted(series: Series, design: Array, values: Array, noise: str) -> dict[str, _noise.Fit]:
     """Every noise model that was asked for and can be fitted."""
     wanted = NOISES if noise == "choose" else (noise,)
     centred = values - values.mean()
@@ -275,7 +155,7 @@ def _half_width(held: _noise.Fit) -> float:
     return float(stats.t.ppf(0.5 + 0.5 * CONFIDENCE, held.freedom) * np.sqrt(held.covariance[1, 1]))
 
 
-def _choose(fits: dict[str, _noise.Fit], criterion: str) -> str:
+def choose(fits: dict[str, _noise.Fit], criterion: str) -> str:
     """The widest of the models that are as good as the best; white where no criterion has a number."""
     if len(fits) == 1:
         return next(iter(fits))
@@ -284,7 +164,7 @@ def _choose(fits: dict[str, _noise.Fit], criterion: str) -> str:
     return max(as_good, key=lambda name: _half_width(fits[name]))
 
 
-def _reduced(series: _Series, held: _noise.Fit, data: tuple[Array, Array], model: TrendModel) -> dict[str, Any]:
+def _reduced(series: Series, held: _noise.Fit, data: tuple[Array, Array], model: TrendModel) -> dict[str, Any]:
     """What the chosen model says of one gauge. ``data``: design, values."""
     design, values = data
     found = held.rows @ (values - values.mean())
@@ -328,7 +208,7 @@ def _of_models(fits: dict[str, _noise.Fit], values: Array) -> dict[str, Any]:
     }
 
 
-def _spread(row: Array, series: _Series, count: int) -> Array:
+def _spread(row: Array, series: Series, count: int) -> Array:
     out = np.zeros(count)
     out[series.places] = row
     return out

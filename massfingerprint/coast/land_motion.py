@@ -11,7 +11,7 @@ ways to a sum, and a mix of both counts something twice or not at all:
 The elastic part is that of the years the receiver measured, not of the gauge's window: ice loss has grown, and so has the uplift.
 """
 
-from collections.abc import Collection, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -19,7 +19,6 @@ import numpy as np
 from massfingerprint.arguments import one_of, real_number
 from massfingerprint.errors import InputError
 
-PATHS = ("A", "B")
 # kind of a term -> the path it belongs to; None: either
 KINDS = {
     "mass, relative sea level": "A",
@@ -136,33 +135,38 @@ def whole_land_motion(gnss: Uplift, *, tie: Tie | None = None) -> Uplift:
     return Uplift(rate=gnss.rate, sigma=float(np.hypot(gnss.sigma, extra)), reference_frame=gnss.reference_frame)
 
 
-def check_path(terms: Mapping[str, str], *, path: str) -> Collection[str]:
+def check_together(kinds: Mapping[str, str]) -> str | None:
     """Refuse a sum that counts land motion twice or not at all.
 
     Parameters
     ----------
-    terms : mapping of term to kind
+    kinds : mapping of term to kind
         Kinds are those of ``KINDS``.
-    path : str
-        ``"A"`` or ``"B"``.
 
     Returns
     -------
-    collection of str
-        The terms, once they go together.
+    str or None
+        The path of the terms, ``"A"`` or ``"B"``; None where none of them belongs to one.
 
     Raises
     ------
     InputError
-        If a kind or the path is not known, or a term belongs to the other path.
+        If a kind is not known, or terms of both paths are in the sum.
     """
-    one_of(path, PATHS, argument="path", kind="path")
-    for term, kind in terms.items():
+    first: dict[str, str] = {}
+    for term, kind in kinds.items():
         one_of(kind, tuple(KINDS), argument=f"kind of {term!r}", kind="kind of term")
-        if KINDS[kind] not in (None, path):
-            allowed = ", ".join(name for name, home in KINDS.items() if home in (None, path))
-            raise InputError(
-                f"{term}: {kind} belongs to path {KINDS[kind]}; with path {path} land motion would count twice or not at all. "
-                f"Path {path} takes {allowed}."
-            )
-    return terms.keys()
+        path = KINDS[kind]
+        if path is not None:
+            first.setdefault(path, term)
+    if len(first) > 1:
+        a, b = first["A"], first["B"]
+        raise InputError(
+            f"components: {a!r} ({kinds[a]}) belongs to path A, {b!r} ({kinds[b]}) to path B; together land motion counts twice or "
+            f"not at all. Path A takes {_of('A')}; path B {_of('B')}."
+        )
+    return next(iter(first), None)
+
+
+def _of(path: str) -> str:
+    return ", ".join(kind for kind, home in KINDS.items() if home in (None, path))

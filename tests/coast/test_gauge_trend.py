@@ -11,7 +11,8 @@ from statsmodels.tsa.statespace.sarimax import SARIMAX
 
 from massfingerprint.coast import _noise
 from massfingerprint.coast.gauge_corrections import nodal_tide
-from massfingerprint.coast.gauge_trend import AS_GOOD, NOISES, TrendModel, gauge_trend
+from massfingerprint.coast.gauge_trend import AS_GOOD, NOISES, gauge_trend
+from massfingerprint.coast.trend_model import TrendModel
 from massfingerprint.errors import InputError, SiteError
 
 RATE = 2.0  # mm yr-1 of all drawn series
@@ -286,7 +287,7 @@ def test_of_models_as_good_the_widest_is_taken(criterion):
 def test_short_series_have_no_noise_they_cannot_tell():
     found = gauge_trend(drawn(white, 12, monthly=False)).isel(gauge=0)
     assert np.isfinite(found["model_rate"].values).tolist() == [True, True, False, True]
-    assert str(gauge_trend(drawn(white, 4, monthly=False))["noise"].values[0]) == "white"
+    assert str(gauge_trend(drawn(white, 6, monthly=False))["noise"].values[0]) == "white"
     with pytest.raises(InputError, match="noise: 'arma11' cannot be fitted to the 12 values of gauge 'g0'"):
         gauge_trend(drawn(white, 12, monthly=False), noise="arma11")
 
@@ -336,12 +337,13 @@ def test_records_that_cannot_carry_a_trend_are_refused():
         InputError, match=r"window: gauge 'g0' has no value from 2100-01-01 to 2110-01-01; it has some from 1960"
     ):
         gauge_trend(data, window=("2100-01-01", "2110-01-01"))
-    with pytest.raises(InputError, match="has values in 2 calendar years of the window, 3 at least"):
+    with pytest.raises(InputError, match="has values in 2 calendar years of the window, 5 at least"):
         gauge_trend(data, window=("1970-01-01", "1971-12-31"))
     with pytest.raises(InputError, match="has values in 2 calendar years"):
         gauge_trend(drawn(white, 2, monthly=False))
-    with pytest.raises(InputError, match="has 3 values in the window, more than 3 are needed"):
-        gauge_trend(drawn(white, 3, monthly=False), model=TrendModel(acceleration=True))
+    much = TrendModel(acceleration=True, steps=["1961-01-01", "1962-01-01", "1963-01-01"])
+    with pytest.raises(InputError, match="has 5 values in the window, more than 6 are needed"):
+        gauge_trend(drawn(white, 5, monthly=False), model=much)
 
 
 @pytest.mark.parametrize("rate", [0.0, 2.0**-20])

@@ -6,7 +6,7 @@ import pytest
 from massfingerprint.coast.land_motion import (
     Tie,
     Uplift,
-    check_path,
+    check_together,
     residual_land_motion,
     whole_land_motion,
 )
@@ -46,18 +46,17 @@ def test_a_mix_is_refused():
         "rebound": "GIA, relative sea level",
         "land": "residual land motion",
     }
-    assert set(check_path({**good, "heat": "steric and dynamic"}, path="A")) == {*good, "heat"}
-    assert check_path({"Greenland": "mass, sea surface", "land": "whole land motion"}, path="B")
+    assert check_together({**good, "heat": "steric and dynamic"}) == "A"
+    assert check_together({"Greenland": "mass, sea surface", "land": "whole land motion"}) == "B"
+    assert check_together({"heat": "steric and dynamic"}) is None
     with pytest.raises(
-        InputError, match="whole land motion belongs to path B; with path A land motion would count twice"
+        InputError, match=r"'Greenland' \(mass, relative sea level\) belongs to path A, 'land' \(whole land motion\)"
     ):
-        check_path({**good, "land": "whole land motion"}, path="A")
-    with pytest.raises(InputError, match="mass, relative sea level belongs to path A; with path B"):
-        check_path(good, path="B")
-    with pytest.raises(InputError, match="path: no path 'C'"):
-        check_path(good, path="C")
+        check_together({**good, "land": "whole land motion"})
+    with pytest.raises(InputError, match="together land motion counts twice or not at all"):
+        check_together({**good, "deep": "mass, sea surface"})
     with pytest.raises(InputError, match="kind of 'x': no kind of term 'tilt'"):
-        check_path({"x": "tilt"}, path="A")
+        check_together({"x": "tilt"})
 
 
 def test_faults_have_their_line():
